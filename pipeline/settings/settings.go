@@ -6,6 +6,7 @@
 package settings
 
 import (
+	"regexp"
 	"time"
 
 	"pkvigil/parse"
@@ -32,6 +33,8 @@ type Settings struct {
 	Mail        Mail           `toml:"mail"`
 	Webhooks    []Webhook      `toml:"webhook"`
 	Serve       Serve          `toml:"serve"`
+
+	naming *naming.Rules
 }
 
 // Laboratory names the place and its night.
@@ -96,6 +99,8 @@ type Compound struct {
 	Fixed       bool      `toml:"fixed_model"` // the number of steps is fixed by the method; choice only alarms
 	PathMM      float64   `toml:"path_mm"`
 	Molar       float64   `toml:"concentration"` // mol/L of dye, for molar coefficients; 0: per set
+
+	sets *regexp.Regexp // Sets, covering the whole name
 }
 
 // Instrument is one spectrophotometer with what belongs to it.
