@@ -1,0 +1,201 @@
+package fit
+
+import (
+	"math"
+	"slices"
+)
+
+// A candidate is a start with the plain sum of squares it gives.
+type candidate struct {
+	p   [maxSteps]float64
+	rss float64
+}
+
+// limit is the number of iterations per descent.
+func (o Options) limit() int {
+	if o.MaxIterations > 0 {
+		return o.MaxIterations
+	}
+	return 200
+}
+
+// starts lists starting values, best first, from a coarse grid of pKa over the
+// ladder and one unit beyond, keeping only those better than their neighbours.
+func (s *Solver) starts(p *Problem) []candidate {
+	c := &s.c
+	if p.Start != nil {
+		var x candidate
+		copy(x.p[:], p.Start)
+		return []candidate{x}
+	}
+	lo, hi := slices.Min(p.PH)-1, slices.Max(p.PH)+1
+	step := [...]float64{0.25, 0.5, 0.8, 1.1}[c.n-1]
+	k := int(math.Ceil((hi-lo)/step)) + 1
+	k = min(k, [...]int{80, 40, 16, 12}[c.n-1])
+	grid := make([]float64, k)
+	for i := range grid {
+		grid[i] = lo + (hi-lo)*float64(i)/float64(k-1)
+	}
+	var all []candidate
+	var idx [maxSteps]int
+	var visit func(level, from int)
+	visit = func(level, from int) {
+		if level == c.n {
+			var x candidate
+			for j := 0; j < c.n; j++ {
+				x.p[j] = grid[idx[j]]
+			}
+			all = append(all, s.try(x))
+			return
+		}
+		for i := from; i < k; i++ {
+			idx[level] = i
+			visit(level+1, i+1)
+		}
+	}
+	visit(0, 0)
+	slices.SortFunc(all, func(a, b candidate) int {
+		switch {
+		case a.rss < b.rss:
+			return -1
+		case a.rss > b.rss:
+			return 1
+		}
+		return 0
+	})
+	return apart(all, c.n, 1.5*step, 3)
+}
+
+// try evaluates the plain sum of squares at x.
+func (s *Solver) try(x candidate) candidate {
+	c := &s.c
+	copy(c.now.p, x.p[:c.n])
+	if c.fixed {
+		c.now.p[c.n] = 0
+	}
+	c.evaluate(&c.now, false)
+	if c.fixed { // the amount is linear: take its best value
+		var yy, xy float64
+		for i := 0; i < c.m*c.q; i++ {
+			yy += c.now.dk[i] * c.now.dk[i]
+			xy += c.now.dk[i] * (c.now.c[i] + c.now.dk[i])
+		}
+		if xy > 0 && yy > 0 {
+			c.now.p[c.n] = math.Log(xy / yy)
+			c.evaluate(&c.now, false)
+		}
+	}
+	x.rss = c.now.rss
+	return x
+}
+
+// apart keeps up to most candidates that differ by more than gap somewhere.
+func apart(all []candidate, n int, gap float64, most int) []candidate {
+	var out []candidate
+	for _, x := range all {
+		near := false
+		for _, y := range out {
+			d := 0.0
+			for j := 0; j < n; j++ {
+				d = math.Max(d, math.Abs(x.p[j]-y.p[j]))
+			}
+			near = near || d <= gap
+		}
+		if !near {
+			out = append(out, x)
+		}
+		if len(out) == most {
+			break
+		}
+	}
+	return out
+}
+
+// locate finds the plain solution (no nuisance) from the best starts and leaves
+// it in c.now and in s.one. It returns the distinct minima, best first.
+func (s *Solver) locate(p *Problem, opt Options, r *Result) []candidate {
+	c := &s.c
+	list := s.starts(p)
+	var found []candidate
+	for _, x := range list {
+		s.try(x)
+		st, it := c.descend(opt.limit())
+		if r != nil {
+			r.Iterations += it
+			r.Starts++
+		}
+		if st == Unusable {
+			continue
+		}
+		y := candidate{rss: c.now.rss}
+		copy(y.p[:], c.now.p[:c.n])
+		found = append(found, y)
+	}
+	slices.SortStableFunc(found, func(a, b candidate) int {
+		switch {
+		case a.rss < b.rss:
+			return -1
+		case a.rss > b.rss:
+			return 1
+		}
+		return 0
+	})
+	if len(found) == 0 {
+		found = list[:1]
+	}
+	found = apart(found, c.n, 1e-4, 3)
+	c.now.zero()
+	s.try(found[0])
+	s.remember()
+	return found
+}
+
+// search makes both estimates.
+func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
+	c := &s.c
+	c.plain(p)
+	found := s.locate(p, opt, r)
+	own := Status(NotRun)
+	best := math.Inf(1)
+	for i, x := range found {
+		if i > 0 && !c.nuisance() {
+			break
+		}
+		c.equip(nil)
+		c.now.zero()
+		s.c.frozen = true
+		s.try(x)
+		s.c.frozen = false
+		st, it := c.descend(opt.limit())
+		r.Iterations += it
+		if c.now.phi < best {
+			best, own = c.now.phi, st
+			s.remember()
+		}
+	}
+	c.now.zero()
+	s.restart()
+	c.evaluate(&c.now, true)
+	c.influences(&s.inf)
+	r.Status = own
+	if !s.inf.ok {
+		r.Status = Undetermined
+		return
+	}
+	c.fill(p, shared, &s.inf, &r.Own)
+	r.Condition = s.inf.cond
+	c.equip(shared)
+	s.restart()
+	st, it := c.descend(opt.limit())
+	r.Iterations += it
+	c.influences(&s.inf)
+	if !s.inf.ok {
+		r.Status = Undetermined
+		return
+	}
+	c.fill(p, shared, &s.inf, &r.Full)
+	r.Condition = s.inf.cond
+	if st != Converged {
+		r.Status = st
+	}
+}

@@ -1,0 +1,242 @@
+package fit
+
+import (
+	"fmt"
+	"math"
+)
+
+// Options say how to fit. The zero value is right for daily work.
+type Options struct {
+	MaxIterations int     // per descent; 0: 200
+	Effective     float64 // number of independent wavelengths when the instrument smooths; 0: all
+	Bare          bool    // only the two estimates with their covariances: no spectra, singular values, slope or leave-one-out
+}
+
+// A Solver fits problems one after the other in the same memory. It is not
+// safe for concurrent use; the zero value is ready.
+type Solver struct {
+	red  reduced
+	c    core
+	inf  influence
+	sig  []float64
+	one  params // the plain solution
+	keep frame
+}
+
+// Solve fits one set. The error is not nil only when p cannot be fitted at all
+// (wrapping ErrProblem); how the fit ended is in Result.Status.
+func Solve(p Problem, opt Options) (*Result, error) {
+	var s Solver
+	return s.Solve(p, opt)
+}
+
+// Solve is the method form, which reuses the memory of earlier fits.
+func (s *Solver) Solve(p Problem, opt Options) (*Result, error) {
+	if err := check(&p); err != nil {
+		return &Result{Status: Unusable, Steps: p.Steps}, err
+	}
+	shared, err := merge(&p)
+	if err != nil {
+		return &Result{Status: Unusable, Steps: p.Steps}, err
+	}
+	r := &Result{Steps: p.Steps, Free: p.Library == nil, Slope: math.NaN(), SlopeSD: math.NaN()}
+	if err := s.prepare(&p, opt); err != nil {
+		r.Status = Unusable
+		return r, err
+	}
+	r.NoiseSD = s.noiseSD()
+	s.search(&p, shared, opt, r)
+	if r.Status != Converged {
+		r.Notes = append(r.Notes, fmt.Sprintf("the fit ended as %v after %d iterations", r.Status, r.Iterations))
+	}
+	return r, nil
+}
+
+// String names the status in words.
+func (s Status) String() string {
+	switch s {
+	case NotRun:
+		return "not run"
+	case Converged:
+		return "converged"
+	case HitLimit:
+		return "iterations used up"
+	case Undetermined:
+		return "undetermined"
+	case Unusable:
+		return "unusable"
+	}
+	return fmt.Sprintf("status %d", int(s))
+}
+
+// prepare weights and reduces the data and sizes the buffers.
+func (s *Solver) prepare(p *Problem, opt Options) error {
+	s.red.load(p, opt.Effective)
+	c := &s.c
+	c.reduced = &s.red
+	c.n, c.n1, c.slope, c.full, c.fixed = p.Steps, p.Steps+1, false, false, p.Library != nil
+	s.sig = grow(s.sig, len(p.PH))
+	clear(s.sig)
+	copy(s.sig, p.SigmaPH)
+	c.ph, c.sig, c.ukap = p.PH, s.sig, p.UAmount
+	if s.red.total == 0 {
+		return bad("all absorbances are zero")
+	}
+	return s.settleNoise(p, opt)
+}
+
+// nuisance reports whether readings or amounts or offsets are uncertain.
+func (c *core) nuisance() bool {
+	if c.ukap > 0 || c.base {
+		return true
+	}
+	for _, v := range c.sig {
+		if v > 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// settleNoise estimates the absorbance noise when none is stated: from the
+// residual of the plain fit where nothing else is uncertain, else from what is
+// left beyond n+1 singular values, which reading errors cannot reach.
+func (s *Solver) settleNoise(p *Problem, opt Options) error {
+	c := &s.c
+	if p.NoiseWave != nil {
+		return nil
+	}
+	inflate := c.inv[0]
+	sigma, ok := 0.0, false
+	if c.nuisance() {
+		sigma, ok = s.red.rankNoise(c.n1)
+		sigma *= 1 / math.Min(inflate, 1)
+	}
+	if !ok {
+		c.plain(p)
+		s.locate(p, opt, nil)
+		free := float64((c.m-c.n1)*c.w - c.n)
+		if c.fixed {
+			free = float64(c.m*c.w - c.n - 1)
+		}
+		if free < 1 {
+			free = 1
+		}
+		rss := c.now.rss
+		if rss <= 1e-12*c.total && !c.fixed {
+			c.full = true
+			c.plain(p)
+			s.restart()
+			c.evaluate(&c.now, true)
+			rss = c.now.rss
+			c.full = false
+		}
+		sigma = math.Sqrt(math.Max(rss, 0) / free)
+	}
+	floor := 1e-12 * math.Sqrt(c.total/float64(c.m*c.w))
+	s.red.scale(math.Max(sigma, floor), p.UBaseline)
+	return nil
+}
+
+// noiseSD is the root mean square absorbance noise as used.
+func (s *Solver) noiseSD() float64 {
+	t := 0.0
+	for _, v := range s.red.inv {
+		t += 1 / (v * v)
+	}
+	return math.Sqrt(t / float64(s.red.w))
+}
+
+// plain makes the core ready for a fit without nuisance parameters.
+func (c *core) plain(p *Problem) {
+	np := c.n
+	if c.fixed {
+		np++
+	}
+	c.shape(np, 0)
+	c.frozen = true
+	if c.fixed {
+		c.library(p)
+	}
+	c.now.zero()
+	c.try.zero()
+}
+
+// library computes coordinates of data and given spectra.
+func (c *core) library(p *Problem) {
+	n1, w, m := c.n1, c.w, c.m
+	e := make([]float64, n1*w)
+	c.lib, c.lib0, c.libY = grow(c.lib, n1*n1), grow(c.lib0, n1), grow(c.libY, m*n1)
+	gram := make([]float64, n1*n1)
+	for j := 0; j < n1; j++ {
+		row := e[j*w : (j+1)*w]
+		for l := range row {
+			row[l] = p.Library[j*w+l] * c.inv[l]
+		}
+		c.lib0[j] = 0
+		if c.base {
+			s := dot(row, c.v)
+			for l := range row {
+				row[l] -= s * c.v[l]
+			}
+			c.lib0[j] = s
+		}
+		for k := 0; k <= j; k++ {
+			g := dot(row, e[k*w:(k+1)*w])
+			gram[j*n1+k], gram[k*n1+j] = g, g
+		}
+	}
+	semiCholesky(c.lib, gram, n1, 1e-15)
+	c.rest = 0
+	for i := 0; i < m; i++ {
+		y := c.y[i*w : (i+1)*w]
+		c.rest += dot(y, y)
+		for j := 0; j < n1; j++ {
+			s := dot(y, e[j*w:(j+1)*w])
+			for k := 0; k < j; k++ {
+				s -= c.lib[j*n1+k] * c.libY[i*n1+k]
+			}
+			if c.lib[j*n1+j] == 0 {
+				s = 0
+			} else {
+				s /= c.lib[j*n1+j]
+			}
+			c.libY[i*n1+j] = s
+			c.rest -= s * s
+		}
+	}
+	c.rest = math.Max(c.rest, 0)
+}
+
+// equip switches nuisance parameters on, with the shared errors or without.
+func (c *core) equip(shared []Shared) {
+	p := append([]float64(nil), c.now.p...)
+	c.shape(c.np, len(shared))
+	c.frozen = false
+	c.shift = grow(c.shift, c.m*len(shared))
+	for k, sh := range shared {
+		for i := 0; i < c.m; i++ {
+			c.shift[i*len(shared)+k] = 0
+			if sh.S != nil {
+				c.shift[i*len(shared)+k] = sh.S[i] * sh.U
+			}
+		}
+	}
+	copy(c.now.p, p)
+}
+
+// remember and restart keep a solution over a change of shape.
+func (s *Solver) remember() {
+	f := &s.c.now
+	s.one.p = append(s.one.p[:0], f.p...)
+	s.one.a = append(s.one.a[:0], f.a...)
+	s.one.k = append(s.one.k[:0], f.k...)
+}
+
+func (s *Solver) restart() {
+	f := &s.c.now
+	f.zero()
+	copy(f.p, s.one.p)
+	copy(f.a, s.one.a)
+	copy(f.k, s.one.k)
+}
