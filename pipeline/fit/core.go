@@ -28,7 +28,7 @@ type core struct {
 	shift   []float64 // m*nb: s_ik u_k
 	frozen  bool      // a, k and b take no part
 	pin     int       // index of a parameter of p held fixed, or -1
-	sumPin  bool      // p[1]-p[0] is held fixed instead
+	pair    int       // p[pair+1]-p[pair] is held fixed, or -1
 
 	lib  []float64 // n1*n1: coordinates of the given spectra
 	lib0 []float64 // n1: their part along v
@@ -58,7 +58,7 @@ type frame struct {
 
 // shape sizes the buffers for np parameters and nb shared errors.
 func (c *core) shape(np, nb int) {
-	c.n1, c.np, c.nb, c.pin, c.sumPin = c.n+1, np, nb, -1, false
+	c.n1, c.np, c.nb, c.pin, c.pair = c.n+1, np, nb, -1, -1
 	c.q = c.n1
 	if c.base {
 		c.q++

@@ -94,7 +94,7 @@ func scaledCondition(cov []float64, stride, n int) float64 {
 // once each, by their signed coefficient, whether or not they took part in
 // the weighting.
 func (c *core) fill(p *Problem, shared []Shared, inf *influence, out *Estimate) {
-	m, n, np := c.m, c.n, c.np
+	m, n := c.m, c.n
 	f := &c.now
 	out.PKa = append(out.PKa[:0], f.p[:n]...)
 	out.Gain = grow(out.Gain, n*m)
@@ -146,7 +146,6 @@ func (c *core) fill(p *Problem, shared []Shared, inf *influence, out *Estimate) 
 		}
 	}
 	out.Objective = f.phi
-	_ = np
 }
 
 // ownParts is the covariance of pKa k and l from reading, amount, noise, baseline.
@@ -218,4 +217,51 @@ func (s *Shared) component(k int, gain []float64) Component {
 	}
 	return Component{Key: s.Key, Name: s.Name, Step: k, C: s.coefficient(k, gain),
 		U: s.U, Unit: s.Unit, DOF: dof, Bucket: s.Bucket, Shared: true}
+}
+
+// libraryRow adds what the uncertainty of given spectra contributes. Their
+// errors are taken as independent between wavelengths and forms.
+func (c *core) libraryRow(p *Problem, inf *influence, out *Estimate) {
+	if !c.fixed || p.ULibrary == nil {
+		return
+	}
+	n, n1, w, q := c.n, c.n1, c.w, c.q
+	basis := c.libraryBasis(p)
+	sens := make([]float64, n*n1*w) // d pKa_k / d library_j at wavelength l
+	for k := 0; k < n; k++ {
+		for i := 0; i < c.m; i++ {
+			t := inf.t[(k*c.m+i)*q : (k*c.m+i)*q+q]
+			for l := range w {
+				x := 0.0
+				for a := 0; a < n1; a++ {
+					x += t[a] * basis[a*w+l]
+				}
+				if c.base {
+					x += t[q-1] * c.w0[i] * c.v[l]
+				}
+				for j := 0; j < n1; j++ {
+					sens[(k*n1+j)*w+l] -= x * c.now.bm[i*n1+j] * c.inv[l]
+				}
+			}
+		}
+	}
+	u := 0.0
+	for _, v := range p.ULibrary {
+		u += v * v
+	}
+	u = math.Sqrt(u / float64(len(p.ULibrary)))
+	for k := 0; k < n; k++ {
+		for l := 0; l < n; l++ {
+			s := 0.0
+			for j, v := range p.ULibrary {
+				s += sens[k*n1*w+j] * sens[l*n1*w+j] * v * v
+			}
+			out.CovOwn[k*n+l] += s
+			out.Cov[k*n+l] += s
+			if k == l && u > 0 {
+				out.Components = append(out.Components, Component{Key: OwnLibrary, Name: "archived spectra",
+					Step: k, C: math.Sqrt(s) / u, U: u, Unit: "absorbance", Bucket: "own"})
+			}
+		}
+	}
 }

@@ -108,9 +108,10 @@ type Result struct {
 	Components int       `json:"components"` // singular values above the edge
 	Indicator  int       `json:"indicator"`  // components by Malinowski's indicator function (1977)
 
-	LeaveOneOut []float64 `json:"leave_one_out"` // m, change of the first-listed pKa of largest change when the rung is left out
-	Alpha       []float64 `json:"alpha"`         // m*(n+1), share of each form per rung
-	Free        bool      `json:"free"`          // spectra were free (no library)
-	FullMatrix  bool      `json:"full_matrix"`   // the reduction was not exact, so the full matrix was used
+	LeaveOneOut []float64 `json:"leave_one_out"`     // m, change of the first-listed pKa of largest change when the rung is left out
+	Alpha       []float64 `json:"alpha"`             // m*(n+1), share of each form per rung
+	Free        bool      `json:"free"`              // spectra were free (no library)
+	FullMatrix  bool      `json:"full_matrix"`       // the reduction was not exact, so the full matrix was used
+	Overlap     *Overlap  `json:"overlap,omitempty"` // two steps that the data do not separate
 	Notes       []string  `json:"notes,omitempty"`
 }

@@ -150,40 +150,34 @@ func (s *Solver) locate(p *Problem, opt Options, r *Result) []candidate {
 	return found
 }
 
-// search makes both estimates.
+// search makes both estimates and, unless bare, what describes them.
 func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	c := &s.c
 	c.plain(p)
 	found := s.locate(p, opt, r)
-	own := Status(NotRun)
-	best := math.Inf(1)
-	for i, x := range found {
-		if i > 0 && !c.nuisance() {
-			break
-		}
-		c.equip(nil)
-		c.now.zero()
-		s.c.frozen = true
-		s.try(x)
-		s.c.frozen = false
+	r.Status = s.own(found, opt, r)
+	if c.now.rss <= 1e-12*c.total && !c.fixed {
+		// The residual is a small difference of large traces: take the full matrix.
+		c.full, r.FullMatrix = true, true
+		c.shape(c.np, 0)
+		s.restart()
 		st, it := c.descend(opt.limit())
+		r.Status = st
 		r.Iterations += it
-		if c.now.phi < best {
-			best, own = c.now.phi, st
-			s.remember()
-		}
+		s.remember()
 	}
-	c.now.zero()
-	s.restart()
-	c.evaluate(&c.now, true)
 	c.influences(&s.inf)
-	r.Status = own
+	r.Condition = s.inf.cond
 	if !s.inf.ok {
 		r.Status = Undetermined
 		return
 	}
 	c.fill(p, shared, &s.inf, &r.Own)
-	r.Condition = s.inf.cond
+	c.libraryRow(p, &s.inf, &r.Own)
+	r.Own.RMS = s.rms(p, opt, r, &r.Own, nil)
+	if !opt.Bare {
+		s.apparentSlope(opt, r)
+	}
 	c.equip(shared)
 	s.restart()
 	st, it := c.descend(opt.limit())
@@ -193,9 +187,91 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 		r.Status = Undetermined
 		return
 	}
-	c.fill(p, shared, &s.inf, &r.Full)
-	r.Condition = s.inf.cond
 	if st != Converged {
 		r.Status = st
+	}
+	c.fill(p, shared, &s.inf, &r.Full)
+	c.libraryRow(p, &s.inf, &r.Full)
+	r.Condition = s.inf.cond
+	if opt.Bare {
+		r.Full.RMS = s.rms(p, opt, r, &r.Full, nil)
+		return
+	}
+	r.Residual = make([]float64, c.m*c.w)
+	r.Full.RMS = s.rms(p, opt, r, &r.Full, r.Residual)
+	c.spectra(p, r)
+	c.shares(r)
+	c.components(opt, r)
+	s.leaveOneOut(shared, opt, r)
+	s.doubt(opt, r)
+}
+
+// own makes the own-weighted estimate from every distinct plain minimum, so
+// that a minimum that only reading errors made look best does not win.
+func (s *Solver) own(found []candidate, opt Options, r *Result) Status {
+	c := &s.c
+	status, best := NotRun, math.Inf(1)
+	for i, x := range found {
+		if i > 0 && !c.nuisance() {
+			break
+		}
+		c.equip(nil)
+		c.now.zero()
+		s.try(x)
+		st, it := c.descend(opt.limit())
+		r.Iterations += it
+		if c.now.phi < best {
+			best, status = c.now.phi, st
+			s.remember()
+		}
+	}
+	if len(found) > 1 && c.nuisance() {
+		c.now.zero()
+		s.restart()
+		c.evaluate(&c.now, true)
+	}
+	return status
+}
+
+// rms is the root mean square residual in absorbance; the bare fit takes it
+// from the weighted sum of squares.
+func (s *Solver) rms(p *Problem, opt Options, r *Result, e *Estimate, out []float64) float64 {
+	if opt.Bare {
+		return r.NoiseSD * math.Sqrt(math.Max(s.c.now.rss, 0)/float64(s.c.m*s.c.w))
+	}
+	return s.c.residual(p, e.Baseline, out)
+}
+
+// doubt turns a formally converged fit into Undetermined where the data do not
+// fix the constants, and says why.
+func (s *Solver) doubt(opt Options, r *Result) {
+	c := &s.c
+	if r.Status != Converged || c.fixed {
+		return
+	}
+	n := c.n
+	rank := min(c.w, c.m)
+	if c.base {
+		rank = min(c.w-1, c.m)
+	}
+	if n == 1 && rank >= 2 && r.Components < 2 && len(r.Singular) >= 2 {
+		r.Status = Undetermined
+		r.Notes = append(r.Notes, "No colour change stands out from the noise in this pH range.")
+		return
+	}
+	if n >= 2 && rank > n && r.Components < n+1 {
+		o := s.overlap(opt, &r.Full)
+		if o.High-o.Low > 0.3 || o.HighAny || o.LowAny {
+			r.Status, r.Overlap = Undetermined, o
+			r.Notes = append(r.Notes, o.Meaning)
+		}
+		return
+	}
+	for k := 0; k < n; k++ {
+		if !(r.Full.CovOwn[k*(n+1)] < 1) {
+			r.Status = Undetermined
+			r.Notes = append(r.Notes, "The solutions do not reach far enough to fix every pKa.")
+			return
+		}
 	}
 }

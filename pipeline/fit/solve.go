@@ -162,52 +162,6 @@ func (c *core) plain(p *Problem) {
 	c.try.zero()
 }
 
-// library computes coordinates of data and given spectra.
-func (c *core) library(p *Problem) {
-	n1, w, m := c.n1, c.w, c.m
-	e := make([]float64, n1*w)
-	c.lib, c.lib0, c.libY = grow(c.lib, n1*n1), grow(c.lib0, n1), grow(c.libY, m*n1)
-	gram := make([]float64, n1*n1)
-	for j := 0; j < n1; j++ {
-		row := e[j*w : (j+1)*w]
-		for l := range row {
-			row[l] = p.Library[j*w+l] * c.inv[l]
-		}
-		c.lib0[j] = 0
-		if c.base {
-			s := dot(row, c.v)
-			for l := range row {
-				row[l] -= s * c.v[l]
-			}
-			c.lib0[j] = s
-		}
-		for k := 0; k <= j; k++ {
-			g := dot(row, e[k*w:(k+1)*w])
-			gram[j*n1+k], gram[k*n1+j] = g, g
-		}
-	}
-	semiCholesky(c.lib, gram, n1, 1e-15)
-	c.rest = 0
-	for i := 0; i < m; i++ {
-		y := c.y[i*w : (i+1)*w]
-		c.rest += dot(y, y)
-		for j := 0; j < n1; j++ {
-			s := dot(y, e[j*w:(j+1)*w])
-			for k := 0; k < j; k++ {
-				s -= c.lib[j*n1+k] * c.libY[i*n1+k]
-			}
-			if c.lib[j*n1+j] == 0 {
-				s = 0
-			} else {
-				s /= c.lib[j*n1+j]
-			}
-			c.libY[i*n1+j] = s
-			c.rest -= s * s
-		}
-	}
-	c.rest = math.Max(c.rest, 0)
-}
-
 // equip switches nuisance parameters on, with the shared errors or without.
 func (c *core) equip(shared []Shared) {
 	p := append([]float64(nil), c.now.p...)

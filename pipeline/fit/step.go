@@ -223,8 +223,8 @@ func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
 	backward(c.a.mat, n, sol)
 	c.gradient(f)
 	dp, db := sol[ne:ne+np], sol[ne+np:]
-	if c.sumPin {
-		dp[1] = dp[0]
+	if c.pair >= 0 {
+		dp[c.pair+1] = dp[c.pair]
 	}
 	for k, d := range dp {
 		g.p[k] = f.p[k] + d
@@ -307,8 +307,8 @@ func (c *core) hold(n int) {
 		}
 		return &mat[i*n+j]
 	}
-	if c.sumPin { // p0 and p1 move together: fold row ne+1 into ne
-		a, b := ne, ne+1
+	if c.pair >= 0 { // both constants move together: fold one row into the other
+		a, b := ne+c.pair, ne+c.pair+1
 		*at(a, a) += *at(b, b) + 2**at(a, b)
 		for j := 0; j < n; j++ {
 			if j != a && j != b {
@@ -319,8 +319,8 @@ func (c *core) hold(n int) {
 	}
 	k := -1
 	switch {
-	case c.sumPin:
-		k = ne + 1
+	case c.pair >= 0:
+		k = ne + c.pair + 1
 	case c.pin >= 0:
 		k = ne + c.pin
 	default:
