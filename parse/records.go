@@ -107,10 +107,12 @@ type Event struct {
 	At       time.Time
 	Zoned    bool
 	Kind     string // "lamp", "electrode", "buffer", "cell", "stock", "lot", "calibration", "service", "signature", ...
-	Resource string // the thing by name: E-35, CB-207, U1
-	Text     string
-	By       string
-	Line     int
+	Resource string // the thing by name: E-35, CB-207
+	// Instrument is the instrument concerned, "" if the event is not tied to one.
+	Instrument string
+	Text       string
+	By         string
+	Line       int
 }
 
 // A Planned set is one row of a night plan.
@@ -190,7 +192,7 @@ type Error struct {
 // Error gives one sentence with everything known.
 func (e *Error) Error() string {
 	var b strings.Builder
-	b.WriteString(e.File)
+	b.WriteString(Clean(e.File))
 	if e.Line > 0 {
 		fmt.Fprintf(&b, ":%d", e.Line)
 	}
