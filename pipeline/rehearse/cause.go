@@ -23,20 +23,20 @@ const (
 	CellTemperature  CauseKind = "cell.temperature"   // K, cell only
 	ScaleShift       CauseKind = "wavelength.shift"   // nm, bands too far to the red
 	ScaleTilt        CauseKind = "wavelength.tilt"    // nm per 100 nm
-	StrayLight       CauseKind = "stray.light"        // % of full light
+	StrayLight       CauseKind = "stray"              // % of full light
 	Bandwidth        CauseKind = "bandwidth"          // nm wider than before
 	Gain             CauseKind = "gain"               // % of absorbance, instrument
 	PathLength       CauseKind = "path"               // % of path, cell
 	StockStrength    CauseKind = "stock"              // % of dye, stock solution
 	ConstantImpurity CauseKind = "impurity.constant"  // % of a coloured impurity that does not change
-	SecondDye        CauseKind = "impurity.dye"       // % of a second dye, 0.8 pKa units higher, bands 10 nm to the blue
-	IonicStrength    CauseKind = "ionic.strength"     // % of the recipe's
+	SecondDye        CauseKind = "impurity.acid"      // % of a second dye, 0.8 pKa units higher, bands 10 nm to the blue
+	IonicStrength    CauseKind = "ionic"              // % of the recipe's
 	BlankOffset      CauseKind = "blank"              // mAU
 	LampDrift        CauseKind = "lamp.drift"         // mAU over a run
 	LowScatter       CauseKind = "scatter"            // mAU of turbidity at the lowest rung
 	AmountTrend      CauseKind = "amount.trend"       // % of dye from first to last rung
-	CarbonDioxide    CauseKind = "carbon.dioxide"     // pH lost at one proton per molecule
-	CarryOver        CauseKind = "carry.over"         // % of the previous solution left in the cell
+	CarbonDioxide    CauseKind = "co2"                // pH lost at one proton per molecule
+	CarryOver        CauseKind = "carry-over"         // % of the previous solution left in the cell
 	NoiseRise        CauseKind = "noise"              // factor on the noise minus one
 )
 

@@ -62,6 +62,7 @@ type Conditions struct {
 	DyeStray     float64 // share of the dye's first rung present in the blank
 	BlankSmooth  float64 // absorbance at the blue end by which the blank is wrong, smooth
 	BaselineA    float64 // flat offset of all scans against the blank
+	CellA        float64 // absorbance of cell and solvent at 500 nm, in scans and blank alike
 	LampDriftA   float64 // change of baseline from first to last scan
 	FadePerMin   float64 // relative loss of dye per minute above pH 11
 	Down         bool    // the ladder is measured from the highest rung down

@@ -211,7 +211,7 @@ func (m *measurement) absorbance(r *Rung, order int) func(nm float64) float64 {
 		if c.Impurity > 0 {
 			e += c.Impurity * impurityBand(d).at(nm, 0)
 		}
-		a := cl*e + flat
+		a := cl*e + flat + cellCurve(c.CellA, nm)
 		if turbid > 0 {
 			a += turbid * math.Pow(500/nm, 3)
 		}
@@ -225,13 +225,12 @@ func impurityBand(d Dye) Form {
 	return Form{[]Band{{b.CentreNM + 15, 55, 1.3 * b.Molar}}}
 }
 
-// blank is what is subtracted from every scan, except for its noise: the
-// scans here are already stated against an ideal blank.
+// blank is the curve of the blank solution in the same cell.
 func (m *measurement) blank(first Rung) func(nm float64) float64 {
 	c, d := m.cond, m.plan.Dye
 	lo, hi := m.x[0], m.x[len(m.x)-1]
 	return func(nm float64) float64 {
-		var a float64
+		a := cellCurve(c.CellA, nm)
 		if c.DyeStray > 0 {
 			for j, f := range d.Forms {
 				a += c.DyeStray * c.DyeMolar * first.Share[j] * f.at(nm, c.BandShift)
@@ -243,6 +242,15 @@ func (m *measurement) blank(first Rung) func(nm float64) float64 {
 		}
 		return a
 	}
+}
+
+// cellCurve is what windows and solvent absorb and scatter.
+func cellCurve(at500, nm float64) float64 {
+	if at500 == 0 {
+		return 0
+	}
+	q := 500 / nm
+	return at500 * (0.85 + 0.15*q*q*q)
 }
 
 // scan lets the instrument record a curve.

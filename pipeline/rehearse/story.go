@@ -3,6 +3,7 @@ package rehearse
 import (
 	"fmt"
 	"time"
+	_ "time/tzdata" // the story needs its zone on machines without a zone database
 )
 
 // A Story is the invented Quillmere Indicator Works over sixty nights. Night 1
@@ -22,9 +23,7 @@ const storyNights = 60
 func NewStory(seed uint64) *Story {
 	zone, err := time.LoadLocation("Europe/Vienna")
 	if err != nil {
-		// A machine without a zone database: the rule of that zone for the
-		// weeks of the story, in which the clock changes once.
-		zone = time.FixedZone("CET", 3600)
+		panic("rehearse: embedded zone database lacks Europe/Vienna: " + err.Error())
 	}
 	return &Story{seed: seed, zone: zone, dyes: Dyes()}
 }
@@ -59,9 +58,13 @@ func (s *Story) Date(night int) string { return s.day(night).Format(time.DateOnl
 
 // NightOf is the number of the night a moment belongs to (17:00 to 17:00).
 func (s *Story) NightOf(t time.Time) int {
-	l := t.In(s.zone).Add(-17 * time.Hour)
-	return int(time.Date(l.Year(), l.Month(), l.Day(), 0, 0, 0, 0, time.UTC).
-		Sub(time.Date(2026, time.September, 14, 0, 0, 0, 0, time.UTC)).Hours()/24) + 1
+	l := t.In(s.zone)
+	d := time.Date(l.Year(), l.Month(), l.Day(), 0, 0, 0, 0, time.UTC)
+	n := int(d.Sub(time.Date(2026, time.September, 13, 0, 0, 0, 0, time.UTC)).Hours() / 24)
+	if l.Hour() < 17 {
+		n--
+	}
+	return n
 }
 
 func nightTag(night int) string { return fmt.Sprintf("n%03d", night) }

@@ -1,0 +1,205 @@
+package rehearse
+
+import (
+	"fmt"
+	"path"
+	"slices"
+	"strconv"
+	"strings"
+)
+
+// Settings is the complete settings file of the laboratory, for shares below
+// base (an absolute, slash-separated path).
+func (s *Story) Settings(base string) []byte {
+	w := &tomlWriter{}
+	w.text("# Settings of the invented laboratory Quillmere Indicator Works.\n")
+	w.table("laboratory", "name", "Quillmere Indicator Works", "zone", "Europe/Vienna",
+		"night_begins", "18:00", "night_ends", "06:00", "brief_at", "06:30")
+	s.folders(w, base)
+	s.rules(w)
+	s.compounds(w)
+	s.instruments(w)
+	s.resources(w)
+	w.table("complete", "roles", []string{"blank", "ph"}, "rungs_min", 7, "silence", "10m", "every_row", true, "deadline", "90m")
+	w.text("\n# Readings of one set scatter together by 0.005; bottles are better than usual here.")
+	w.table("method", "activity", "davies", "report_at", 25.0, "constant", "mixed", "coverage_factor", 2.0,
+		"absorbance_ceiling", 1.5, "calibration_age_hold", "192h")
+	w.table("budget", "u_buffer", 0.003, "u_calibration_mv", 0.1, "u_drift_per_day", 0.001, "u_junction", 0.005,
+		"u_temperature", 0.1, "u_activity_rel", 0.06, "u_stray", 0.0003, "u_impurity", 0.002)
+	w.text("\n# Electrodes are calibrated every Monday.")
+	w.list("check", "check", "calibration.age", "note_when", []float64{192}, "hold_when", []float64{240})
+	w.table("charts", "false_alarm_nights", 365.0, "impact_limit", 0.02, "baseline_nights", 14, "young_nights", 8)
+	w.list("person", "name", manager, "mail", "manager@quillmere.example", "tells", []string{"cases", "brief"}, "after", "72h")
+	w.list("person", "name", metrologist, "mail", "metrology@quillmere.example", "tells", []string{"cases", "absence", "brief"})
+	w.list("person", "name", analyst, "mail", "night@quillmere.example", "tells", []string{"absence", "brief"})
+	return w.b
+}
+
+func (s *Story) folders(w *tomlWriter, base string) {
+	for _, f := range Folders() {
+		rows := []any{"name", f, "path", path.Join(base, f), "marker_file", MarkerFile, "settle", "2s", "sweep", "5s", "zone", "Europe/Vienna"}
+		if f == instOne || f == instTwo {
+			rows = append(rows, "instrument", f, "expect_first", "18:20", "silence_deadline", "2h")
+		}
+		w.list("folder", rows...)
+	}
+}
+
+func (s *Story) rules(w *tomlWriter) {
+	w.text("\n# n041/CR-1656_s05.csv: night, lot, solution. A copy made by hand ends in \" (2)\".")
+	w.list("rule", "name", "sample", "folders", []string{instOne, instTwo},
+		"pattern", raw(`^n(?P<night>\d{3})/(?P<set>[A-Z]{2,3}-\d{4})_(?:s(?P<rung>\d{2})|(?P<role>blank|ph))(?: \((?P<copy>\d)\))?\.(?:csv|jdx)$`),
+		"set", "${set}.n${night}", "pair", "key",
+		"example", []string{"n041/CR-1656_s05.csv", "n041/CR-1656_ph.csv", "n012/BCG-1201_blank.jdx", "n003/PR-1049_s11 (2).csv"})
+	w.text("\n# n041/RI-C.open_s05.csv: night, reference, place in the night, solution.")
+	w.list("rule", "name", "reference", "folders", []string{instOne, instTwo},
+		"pattern", raw(`^n(?P<night>\d{3})/(?P<ref>RI-[A-D]2?)\.(?P<slot>open|mid|close)_(?:s(?P<rung>\d{2})|(?P<role>blank|ph))(?: \((?P<copy>\d)\))?\.csv$`),
+		"set", "${ref}.${slot}.n${night}", "pair", "key",
+		"example", []string{"n041/RI-C.open_s05.csv", "n060/RI-C2.close_blank.csv", "n001/RI-A.open_ph.csv"})
+	w.text("\n# n041/RI-C.open.jdx: all scans of a reference in one file; blocks are called blank, s01, s02 ...")
+	w.list("rule", "name", "reference-file", "folders", []string{instTwo},
+		"pattern", raw(`^n(?P<night>\d{3})/(?P<ref>RI-[A-D]2?)\.(?P<slot>open|mid|close)(?: \((?P<copy>\d)\))?\.jdx$`),
+		"column", raw(`^(?:s(?P<rung>\d{2})|(?P<role>blank))$`),
+		"set", "${ref}.${slot}.n${night}", "pair", "key",
+		"example", []string{"n041/RI-C.open.jdx", "n010/RI-D.open (2).jdx"})
+	w.list("rule", "name", "calibration", "folders", []string{"METERS"}, "role", "calibration",
+		"pattern", raw(`^E-\d{2}_(?P<date>\d{4}-\d{2}-\d{2})\.csv$`), "example", []string{"E-31_2026-09-14.csv"})
+	w.list("rule", "name", "events", "folders", []string{"LOG"}, "role", "events",
+		"pattern", raw(`^events_(?P<date>\d{4}-\d{2}-\d{2})\.csv$`), "example", []string{"events_2026-09-14.csv"})
+	w.list("rule", "name", "plan", "folders", []string{"LOG"}, "role", "plan",
+		"pattern", raw(`^plan_(?P<date>\d{4}-\d{2}-\d{2})\.csv$`), "example", []string{"plan_2026-09-14.csv"})
+}
+
+// compounds writes references and products.
+func (s *Story) compounds(w *tomlWriter) {
+	w.text("\n# References, measured to watch the system.")
+	for _, name := range []string{"RI-A", "RI-B", "RI-C", "RI-C2", "RI-D"} {
+		b := reference(1, name, "open")
+		d := s.dyes[b.Dye]
+		since := s.Date(1)
+		if name == "RI-C2" {
+			since = s.Date(nightNewLot)
+		}
+		w.list("compound", append(s.compound(d, name, `^`+name+`\.`),
+			"lot", b.Lot, "reference", true, "reference_lot", b.Lot, "since", since,
+			"assigned", d.PKa[0], "u_assigned", 0.004, "fixed_model", true)...)
+	}
+	w.text("\n# Products, by lot.")
+	for _, key := range []string{"BCG", "BCP", "PR", "CR", "TB"} {
+		d := s.dyes[key]
+		w.list("compound", append(s.compound(d, sampleCompounds()[key], `^(?P<lot>`+key+`-\d{4})\.`), "lot", "${lot}")...)
+	}
+}
+
+// compound are the keys common to references and products.
+func (s *Story) compound(d Dye, name, sets string) []any {
+	return []any{
+		"name", name, "title", d.Title, "sets", raw(sets), "charge", d.Charge, "steps", len(d.PKa), "pka", d.PKa,
+		"dpka_dt", d.DPKaDT[0], "ladder_nominal", d.Ladder, "clear_window", d.Clear[:], "range", d.Range[:],
+		"ionic_strength", 0.1, "u_ionic_rel", 0.01, "medium", d.Buffer, "temperature", 25.0, "target_u", 0.05,
+		"path_mm", 10.0, "concentration", 21e-6,
+	}
+}
+
+func (s *Story) instruments(w *tomlWriter) {
+	for _, inst := range []string{instOne, instTwo} {
+		cell, lamp, lo := "F-2", "L-12", 380.0
+		if inst == instTwo {
+			cell, lamp, lo = "K-7", "L-21", 300.0
+		}
+		w.list("instrument", "name", inst, "range", []float64{lo, 760}, "absorbance_ceiling", 1.5, "sigma_absorbance", 0.0006,
+			"electrode", electrodeOf(inst, 1), "meter", meterOf(inst), "lamp", lamp, "cell", cell, "room", "night room",
+			"sigma_ph", 0.006, "u_amount", 0.003, "u_baseline", 0.0008)
+	}
+}
+
+// resources writes what sets share.
+func (s *Story) resources(w *tomlWriter) {
+	both := []string{instOne, instTwo}
+	add := func(name, kind string, shared []string, from, until int, more ...any) {
+		rows := []any{"name", name, "kind", kind, "shared_by", shared, "from", s.Date(from)}
+		if until > 0 {
+			rows = append(rows, "until", s.Date(until))
+		}
+		w.list("resource", append(rows, more...)...)
+	}
+	add("E-31", "electrode", []string{instOne}, 1, nightReplaced)
+	add("E-35", "electrode", []string{instOne}, nightReplaced, 0)
+	add("E-34", "electrode", []string{instTwo}, 1, 0)
+	add("M-3", "meter", []string{instOne}, 1, 0)
+	add("M-5", "meter", []string{instTwo}, 1, 0)
+	add("L-12", "lamp", []string{instOne}, 1, nightLamp)
+	add("L-13", "lamp", []string{instOne}, nightLamp, 0)
+	add("L-21", "lamp", []string{instTwo}, 1, 0)
+	add("F-2", "cell", []string{instOne}, 1, 0)
+	add("K-7", "cell", []string{instTwo}, 1, 0)
+	add("night room", "room", both, 1, 0)
+	all := bottles()
+	for i, b := range all {
+		until := 0
+		for _, later := range all[i+1:] {
+			if later.label == b.label && until == 0 {
+				until = later.from
+			}
+		}
+		add(b.lot, "buffer", both, b.from, until, "value", b.label, "u", 0.003)
+	}
+	for _, name := range []string{"RI-A", "RI-B", "RI-C", "RI-C2", "RI-D"} {
+		from, until := 1, 0
+		switch name {
+		case "RI-C":
+			until = nightOldLotEnds
+		case "RI-C2":
+			from = nightNewLot
+		}
+		add(reference(1, name, "open").Lot, "stock", []string{name}, from, until)
+	}
+}
+
+// raw is text for a literal string.
+type raw string
+
+// tomlWriter writes tables in the order given.
+type tomlWriter struct{ b []byte }
+
+func (w *tomlWriter) text(s string) { w.b = append(append(w.b, s...), '\n') }
+
+func (w *tomlWriter) table(name string, rows ...any) { w.block("["+name+"]", rows) }
+
+func (w *tomlWriter) list(name string, rows ...any) { w.block("[["+name+"]]", rows) }
+
+func (w *tomlWriter) block(head string, rows []any) {
+	w.b = append(w.b, '\n')
+	w.text(head)
+	for pair := range slices.Chunk(rows, 2) {
+		w.text(fmt.Sprintf("%s = %s", pair[0], tomlValue(pair[1])))
+	}
+}
+
+func tomlValue(v any) string {
+	switch x := v.(type) {
+	case raw:
+		return "'" + string(x) + "'"
+	case string:
+		return strconv.Quote(x)
+	case float64:
+		t := strconv.FormatFloat(x, 'g', -1, 64)
+		if !strings.ContainsAny(t, ".e") {
+			t += ".0"
+		}
+		return t
+	case []float64:
+		return "[" + joined(x, func(f float64) string { return tomlValue(f) }) + "]"
+	case []string:
+		return "[" + joined(x, strconv.Quote) + "]"
+	}
+	return fmt.Sprint(v)
+}
+
+func joined[T any](list []T, show func(T) string) string {
+	parts := make([]string, len(list))
+	for i, v := range list {
+		parts[i] = show(v)
+	}
+	return strings.Join(parts, ", ")
+}
