@@ -80,19 +80,19 @@ func (s *Story) compounds(w *tomlWriter) {
 		if name == "RI-C2" {
 			since = s.Date(nightNewLot)
 		}
-		w.list("compound", append(s.compound(d, name, `^`+name+`\.`),
+		w.list("compound", append(s.compoundKeys(d, name, `^`+name+`\.`),
 			"lot", b.Lot, "reference", true, "reference_lot", b.Lot, "since", since,
 			"assigned", d.PKa[0], "u_assigned", 0.004, "fixed_model", true)...)
 	}
 	w.text("\n# Products, by lot.")
 	for _, key := range []string{"BCG", "BCP", "PR", "CR", "TB"} {
 		d := s.dyes[key]
-		w.list("compound", append(s.compound(d, sampleCompounds()[key], `^(?P<lot>`+key+`-\d{4})\.`), "lot", "${lot}")...)
+		w.list("compound", append(s.compoundKeys(d, sampleCompounds()[key], `^(?P<lot>`+key+`-\d{4})\.`), "lot", "${lot}")...)
 	}
 }
 
-// compound are the keys common to references and products.
-func (s *Story) compound(d Dye, name, sets string) []any {
+// compoundKeys are the keys common to references and products.
+func (s *Story) compoundKeys(d Dye, name, sets string) []any {
 	return []any{
 		"name", name, "title", d.Title, "sets", raw(sets), "charge", d.Charge, "steps", len(d.PKa), "pka", d.PKa,
 		"dpka_dt", d.DPKaDT[0], "ladder_nominal", d.Ladder, "clear_window", d.Clear[:], "range", d.Range[:],
