@@ -32,6 +32,11 @@ type Options struct {
 	Substitute *Trace       // blank to use when the set has none
 	SigmaA     float64      // declared noise of the instrument; 0: estimate only
 	Align      bool         // allow alignment up to 0.3 nm within the set
+
+	Forms     int     // absorbing forms expected, steps + 1; 0: 2
+	Scatter   bool    // remove a lambda^-p rise seen in the clear windows
+	MaxOffset float64 // deviation of a scan's clear-window offset from the set above which the rung takes no part, absorbance; 0: 0.020
+	TopA      float64 // usual highest absorbance of this compound at NominalMM; 0: unknown
 }
 
 // A Record is one thing the preparation did or found.
@@ -65,6 +70,10 @@ type Prepared struct {
 	BestChange  float64      // largest colour change left, absorbance
 	Masked      [][2]float64 // nm intervals taken out, for all rungs
 	HasBlank    bool
+	HasClear    bool      // a clear window lay inside the scans; without it ClearOffset is zero and ClearMean, ClearTrend are NaN
+	BlankNoise  []float64 // w, standard deviation of the subtracted blank; common to all rungs, so free spectra take it up and it is not part of NoiseWave; nil without a blank
+	Scatter     []float64 // m, absorbance at 500 nm of a lambda^-p rise found in the clear windows; nil where it cannot be told from an offset
+	ScatterP    float64   // exponent p of that rise; 0: none
 	Records     []Record
 	LeftOut     []LeftOut // rungs that could not take part
 }

@@ -1,0 +1,231 @@
+package spectra
+
+import (
+	"fmt"
+	"math"
+	"strings"
+
+	"gonum.org/v1/gonum/mat"
+)
+
+// The rules for displaced scans, nm.
+const (
+	alignMost = 0.3  // a larger displacement is reported, not mended
+	alignSeen = 0.05 // a smaller one is left as it is
+)
+
+// align finds how far each scan is displaced in wavelength relative to the
+// set: what the set's components leave of a scan, compared with the derivative
+// of its spectrum. Displacements up to 0.3 nm are mended when Options allow it.
+//
+// A displacement common to all scans is invisible here and has no effect on
+// the fit.
+func (p *preparation) align() {
+	if len(p.rows) < p.opt.Forms+2 || p.columns() < 20 {
+		return
+	}
+	var sd []float64
+	total := make([]float64, len(p.rows))
+	mended := map[string]float64{}
+	for round := range 3 {
+		delta, u := p.displacement()
+		if delta == nil {
+			return
+		}
+		sd = u
+		moved := false
+		for i := range p.rows {
+			r := &p.rows[i]
+			now := total[i] + delta[i]
+			r.shift = now
+			if !p.opt.Align || math.Abs(now) > alignMost || math.Abs(delta[i]) < math.Max(4*sd[i], alignSeen/(1+2*float64(round))) {
+				continue
+			}
+			y := make([]float64, len(r.a))
+			shifted(y, p.x, r.a, delta[i])
+			r.a = y
+			total[i] = now
+			mended[r.key] = now
+			moved = true
+		}
+		if !moved {
+			break
+		}
+	}
+	p.reportShifts(sd, mended)
+}
+
+// reportShifts records what was mended and what was too large to mend.
+func (p *preparation) reportShifts(sd []float64, mended map[string]float64) {
+	var large []string
+	most, largest := 0.0, 0.0
+	for i, r := range p.rows {
+		if _, ok := mended[r.key]; ok {
+			most = math.Max(most, math.Abs(r.shift))
+			continue
+		}
+		if math.Abs(r.shift) > math.Max(4*sd[i], alignSeen) && (math.Abs(r.shift) > alignMost || !p.opt.Align) {
+			large = append(large, r.key)
+			largest = math.Max(largest, math.Abs(r.shift))
+		}
+	}
+	if len(mended) > 0 {
+		p.record("scan.aligned", "", most, "nm", "%d scans were displaced by up to %.2f nm and brought back.", len(mended), most)
+	}
+	if len(large) > 0 {
+		verb := "are"
+		if len(large) == 1 {
+			verb = "is"
+		}
+		p.record("scan.jitter", "", largest, "nm", "%s %s displaced by up to %.2f nm.", list(large), verb, largest)
+	}
+}
+
+// list joins names for a sentence: "r04", "r04 and r09", "r04, r09 and 3 more".
+func list(names []string) string {
+	switch n := len(names); {
+	case n == 1:
+		return names[0]
+	case n <= 4:
+		return strings.Join(names[:n-1], ", ") + " and " + names[n-1]
+	default:
+		return fmt.Sprintf("%s and %d more", strings.Join(names[:3], ", "), n-3)
+	}
+}
+
+// displacement solves for all displacements at once: the residual of the
+// components is -(I - H) D G, with H the projection on the left vectors, D the
+// displacements and G the part of the derivatives outside the components. The
+// direction in which all scans move together is null and set to zero.
+func (p *preparation) displacement() (delta, sd []float64) {
+	a, cols := p.matrix()
+	m, w := len(p.rows), len(cols)
+	f := factorise(a, m, w, p.opt.Forms)
+	q := f.rightBasis()
+	r := f.residual(a)
+	g := p.derivatives(f, cols)
+	for i := range m {
+		removeBasis(r[i*w:(i+1)*w], q)
+		removeBasis(g[i*w:(i+1)*w], q)
+	}
+	normal := mat.NewSymDense(m, nil)
+	rhs := make([]float64, m)
+	for i := range m {
+		for o := i; o < m; o++ {
+			h := 0.0
+			for c := range f.k {
+				h += f.u[i*f.k+c] * f.u[o*f.k+c]
+			}
+			if i == o {
+				h -= 1
+			}
+			normal.SetSym(i, o, -h*dot(g[i*w:(i+1)*w], g[o*w:(o+1)*w]))
+		}
+		rhs[i] = -dot(r[i*w:(i+1)*w], g[i*w:(i+1)*w])
+	}
+	var eig mat.EigenSym
+	if !eig.Factorize(normal, true) {
+		return nil, nil
+	}
+	values := eig.Values(nil)
+	var vec mat.Dense
+	eig.VectorsTo(&vec)
+	largest := values[m-1]
+	if largest <= 0 {
+		return nil, nil
+	}
+	delta, sd = make([]float64, m), make([]float64, m)
+	variance := dot(r, r) / float64(max(1, (m-f.k)*(w-len(q))))
+	for c := range m {
+		if values[c] < 1e-6*largest {
+			continue
+		}
+		b := 0.0
+		for i := range m {
+			b += vec.At(i, c) * rhs[i]
+		}
+		for i := range m {
+			delta[i] += vec.At(i, c) * b / values[c]
+			sd[i] += vec.At(i, c) * vec.At(i, c) * variance / values[c]
+		}
+	}
+	// The zero of the displacements is the scan in the middle of them.
+	zero := median(append([]float64(nil), delta...))
+	for i := range m {
+		delta[i] -= zero
+		sd[i] = math.Sqrt(sd[i])
+	}
+	return delta, sd
+}
+
+// rightBasis is an orthonormal basis of the components and a constant.
+func (f factor) rightBasis() [][]float64 {
+	var q [][]float64
+	add := func(v []float64) {
+		norm := math.Sqrt(dot(v, v))
+		removeBasis(v, q)
+		removeBasis(v, q)
+		if left := math.Sqrt(dot(v, v)); left > 1e-8*norm {
+			for j := range v {
+				v[j] /= left
+			}
+			q = append(q, v)
+		}
+	}
+	for c := range f.k {
+		add(append([]float64(nil), f.v[c*f.w:(c+1)*f.w]...))
+	}
+	one := make([]float64, f.w)
+	for j := range one {
+		one[j] = 1
+	}
+	add(one)
+	return q
+}
+
+// removeBasis projects a row off an orthonormal basis.
+func removeBasis(row []float64, q [][]float64) {
+	for _, v := range q {
+		s := dot(row, v)
+		for j := range row {
+			row[j] -= s * v[j]
+		}
+	}
+}
+
+// derivatives of the scans as the components see them, per nm, m*w.
+func (p *preparation) derivatives(f factor, cols []int) []float64 {
+	w := f.w
+	d := make([]float64, f.k*w)
+	x := make([]float64, w)
+	for j, c := range cols {
+		x[j] = p.x[c]
+	}
+	for c := range f.k {
+		for j := range w {
+			lo, hi := max(0, j-2), min(w-1, j+2)
+			// slope of a straight line through up to five points
+			n, sx, sy := float64(hi-lo+1), 0.0, 0.0
+			for k := lo; k <= hi; k++ {
+				sx += x[k]
+				sy += f.v[c*w+k]
+			}
+			sxx, sxy := 0.0, 0.0
+			for k := lo; k <= hi; k++ {
+				sxx += (x[k] - sx/n) * (x[k] - sx/n)
+				sxy += (x[k] - sx/n) * (f.v[c*w+k] - sy/n)
+			}
+			d[c*w+j] = sxy / sxx
+		}
+	}
+	out := make([]float64, f.m*w)
+	for i := range f.m {
+		for c := range f.k {
+			scale := f.u[i*f.k+c] * f.s[c]
+			for j := range w {
+				out[i*w+j] += scale * d[c*w+j]
+			}
+		}
+	}
+	return out
+}
