@@ -21,6 +21,7 @@ type Design struct {
 	TemperatureC float64   // 0: 25
 	Buffers      []float64 // pH of the calibration buffers, ascending: low, mid, high
 	CO2Above     float64   // pH from which uptake of carbon dioxide shows; 0: 7.5
+	BandwidthNM  float64   // spectral bandwidth; 0: 2
 
 	Minus float64 // impurity: pKa of a second dye less that of the first; 0: 0.8
 	Band  float64 // displacement of the second dye's bands, nm; 0: -10
@@ -61,6 +62,7 @@ func (d Design) filled() Design {
 	set(&d.Ionic, 0.1)
 	set(&d.TemperatureC, 25)
 	set(&d.CO2Above, 7.5)
+	set(&d.BandwidthNM, 2)
 	set(&d.Minus, 0.8)
 	set(&d.Band, -10)
 	set(&d.SigmaPH, 0.006)
@@ -82,14 +84,4 @@ func (d Design) optical() error {
 		return fmt.Errorf("%w: no pKa", ErrDesign)
 	}
 	return nil
-}
-
-// Fingerprint gives the change of every characteristic per unit (Trait.Step) of
-// a cause, for a reference or electrode with design d: one map per free size
-// of the cause. Characteristics that do not move are absent. Optical causes
-// are simulated without noise on the design's own spectra and refitted with
-// est; nil est means Weighted. Without spectra only the causes with a closed form
-// are available, and the others return ErrDesign.
-func Fingerprint(d Design, c Cause, est Estimator) ([]map[Characteristic]float64, error) {
-	return nil, nil
 }

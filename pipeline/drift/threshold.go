@@ -1,9 +1,6 @@
 package drift
 
-import (
-	"context"
-	"math"
-)
+import "math"
 
 // Threshold bounds the ln B at which a group score of n hypotheses (cause x
 // resource x shape) may ring if a false case in one of nights nights is
@@ -30,12 +27,4 @@ type Calibrated struct {
 	Nights    int     `json:"nights"` // simulated quiet nights in all
 	Bound     float64 `json:"bound"`  // Threshold's value, for comparison
 	Text      string  `json:"text"`
-}
-
-// Calibrate simulates the whole procedure on quiet nights (baseline means and
-// spreads estimated from as many sets as the cells have, the history's pattern of
-// observations and uses) and returns the threshold that gives one false case in
-// rules.FalseAlarmNights nights. It ends early, with what it has, when ctx ends.
-func (m *Model) Calibrate(ctx context.Context, h History, plan CalibrationPlan) (Calibrated, error) {
-	return Calibrated{}, nil
 }
