@@ -87,11 +87,16 @@ func NewChart(b Baseline, r Rules) *Chart {
 	return c
 }
 
-// slackForCentre is the share of the centre's standard uncertainty by which the
-// slack of the cumulative sum grows. The sum adds up an error of the centre night
-// after night; without this a twenty-night baseline would ring several times as
-// often as asked (TestShortBaselinesKeepTheRate holds the figures).
-const slackForCentre = 0.5
+// Charts that add up neighbouring values feel an error of the centre night after
+// night. What they take off for it, in standard uncertainties of the centre, was
+// chosen so that the chance of a false flag in a hundred nights stays near that of a
+// known centre whatever the length of the baseline (TestShortBaselinesKeepTheRate
+// holds the figures).
+const (
+	slackForCentre = 0.5 // added to the slack of the cumulative sum
+	sideForCentre  = 0.5 // how far beyond the centre a value must lie to count for a side
+	meanForCentre  = 0.5 // taken into the variance of the weighted mean
+)
 
 // tally is one side of a cumulative sum.
 type tally struct {
@@ -212,7 +217,8 @@ func (c *Chart) weightedMean(j *Judgement, night int, y, sd float64) {
 	c.ewmaVar = (1-w)*(1-w)*c.ewmaVar + w*w*rel*rel + 2*w*(1-w)*carried
 	c.ewmaCov = w*rel*rel + (1-w)*carried
 	c.ewma = (1-w)*c.ewma + w*y
-	half := c.weighted * c.b.SD * math.Sqrt(c.ewmaVar+c.centreRatio*c.centreRatio)
+	u := meanForCentre * c.centreRatio
+	half := c.weighted * c.b.SD * math.Sqrt(c.ewmaVar+u*u)
 	show := c.b.Scale.toShow
 	j.EWMA, j.EWMALow, j.EWMAHigh = show(c.ewma), show(c.b.Centre-half), show(c.b.Centre+half)
 	if d := c.ewma - c.b.Centre; math.Abs(d) > half {

@@ -100,12 +100,12 @@ func (c *Chart) patterns(j *Judgement) {
 			return
 		}
 		if sign, back, ok := w.ofLast(need, of, border); ok {
-			j.patternFlag(name, w.since(back), sign, need, of, border)
+			c.patternFlag(j, name, w.since(back), sign, need, of, border)
 		}
 	}
 	same(r.TwoOfThree, 2, 3, outer, twoOfThreeName())
 	same(r.FourOfFive, 4, 5, inner, fourOfFiveName())
-	same(r.OneSide > 0, r.OneSide, r.OneSide, 0, oneSideName(r.OneSide))
+	same(r.OneSide > 0, r.OneSide, r.OneSide, sideForCentre*c.centreRatio, oneSideName(r.OneSide))
 	same(r.TwoBeyond, 2, 2, outer, twoBeyondName())
 	same(r.FourBeyond, 4, 4, inner, fourBeyondName())
 	if r.Opposite && w.n >= 2 && math.Abs(w.at(0)) > outer && math.Abs(w.at(1)) > outer && w.at(0)*w.at(1) < 0 {
@@ -127,9 +127,9 @@ func (c *Chart) patterns(j *Judgement) {
 	}
 }
 
-func (j *Judgement) patternFlag(name string, since int, sign float64, need, of int, border float64) {
+func (c *Chart) patternFlag(j *Judgement, name string, since int, sign float64, need, of int, border float64) {
 	where := side(sign) + " the centre"
-	if border > 0 {
+	if border > sideForCentre*c.centreRatio {
 		where = fmt.Sprintf("more than %.2g standard deviations %s the centre", border, side(sign))
 	}
 	if need == of {

@@ -100,15 +100,6 @@ func (r Rules) zone() float64 {
 // any reports whether a pattern test is on.
 func (r Runs) any() bool { return r != Runs{} }
 
-// onZones reports whether a test on zones or sides is on; order reports the same of
-// the tests that look at rise and fall.
-func (r Runs) onZones() bool {
-	r.Monotone, r.Alternating = 0, 0
-	return r.any()
-}
-
-func (r Runs) onOrder() bool { return r.Monotone > 0 || r.Alternating > 0 }
-
 // Names of the pattern tests as people see them.
 func twoOfThreeName() string    { return "two of three near the limit on one side" }
 func fourOfFiveName() string    { return "four of five away from the centre on one side" }

@@ -39,7 +39,7 @@ func (c *chain) run(shift float64) RunLength {
 		}
 		r := next / alive
 		// Measured on the probability of a flag, since that is what run lengths ask.
-		if math.Abs(r-ratio) <= 1e-11*(1-r)+1e-16 {
+		if math.Abs(r-ratio) <= 1e-9*(1-r)+5e-16 {
 			still++
 		} else {
 			still = 0

@@ -63,10 +63,7 @@ func (c *Chart) selfStart(j *Judgement, night int, y float64) {
 	if math.IsNaN(q) {
 		return
 	}
-	k := c.r.CusumSlack
-	if k == 0 {
-		k = 0.5
-	}
+	k := c.r.selfSlack()
 	c.self.up.add(q, k, night)
 	c.self.down.add(-q, k, night)
 	j.SelfHigh, j.SelfLow = c.self.up.sum, c.self.down.sum
