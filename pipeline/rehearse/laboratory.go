@@ -8,9 +8,23 @@ import (
 	"strings"
 )
 
+// Wires are the places outside the laboratory that a replay wants to reach.
+// Empty fields are left out of the settings.
+type Wires struct {
+	DataDir          string // where the program keeps its data
+	MailHost         string // a relay on this machine, spoken to in clear
+	MailPort         int
+	WebhookURL       string
+	WebhookSecretEnv string // environment variable with the signing secret
+	Listen           string // address of the status page
+}
+
 // Settings is the complete settings file of the laboratory, for shares below
-// base (an absolute, slash-separated path).
-func (s *Story) Settings(base string) []byte {
+// base (an absolute, slash-separated path), without mail and webhook.
+func (s *Story) Settings(base string) []byte { return s.SettingsWith(base, Wires{}) }
+
+// SettingsWith is Settings with places to send messages to.
+func (s *Story) SettingsWith(base string, to Wires) []byte {
 	w := &tomlWriter{}
 	w.text("# Settings of the invented laboratory Quillmere Indicator Works.\n")
 	w.table("laboratory", "name", "Quillmere Indicator Works", "zone", "Europe/Vienna",
@@ -20,7 +34,7 @@ func (s *Story) Settings(base string) []byte {
 	s.compounds(w)
 	s.instruments(w)
 	s.resources(w)
-	w.table("complete", "roles", []string{"blank", "ph"}, "rungs_min", 7, "silence", "10m", "every_row", true, "deadline", "90m")
+	w.table("complete", "roles", []string{"blank", "ph"}, "rungs_min", 7, "silence", "10m", "every_row", true, "deadline", "45m")
 	w.text("\n# Readings of one set scatter together by 0.005; bottles are better than usual here.")
 	w.table("method", "activity", "davies", "report_at", 25.0, "constant", "mixed", "coverage_factor", 2.0,
 		"absorbance_ceiling", 1.5, "calibration_age_hold", "192h")
@@ -29,10 +43,38 @@ func (s *Story) Settings(base string) []byte {
 	w.text("\n# Electrodes are calibrated every Monday.")
 	w.list("check", "check", "calibration.age", "note_when", []float64{192}, "hold_when", []float64{240})
 	w.table("charts", "false_alarm_nights", 365.0, "impact_limit", 0.02, "baseline_nights", 14, "young_nights", 8)
-	w.list("person", "name", manager, "mail", "manager@quillmere.example", "tells", []string{"cases", "brief"}, "after", "72h")
-	w.list("person", "name", metrologist, "mail", "metrology@quillmere.example", "tells", []string{"cases", "absence", "brief"})
-	w.list("person", "name", analyst, "mail", "night@quillmere.example", "tells", []string{"absence", "brief"})
+	people(w, to)
+	outside(w, to)
 	return w.b
+}
+
+// people are told by mail only where there is a relay.
+func people(w *tomlWriter, to Wires) {
+	add := func(name, address string, tells []string, more ...any) {
+		rows := []any{"name", name, "tells", tells}
+		if to.MailHost != "" {
+			rows = append(rows, "mail", address+"@quillmere.example")
+		}
+		w.list("person", append(rows, more...)...)
+	}
+	add(metrologist, "metrology", []string{"cases", "absence", "brief"})
+	add(manager, "manager", []string{"cases", "brief"}, "after", "72h")
+	add(analyst, "night", []string{"absence", "brief"})
+}
+
+func outside(w *tomlWriter, to Wires) {
+	if to.DataDir != "" {
+		w.table("storage", "data_dir", to.DataDir)
+	}
+	if to.MailHost != "" {
+		w.table("mail", "host", to.MailHost, "port", to.MailPort, "from", "pkvigil@quillmere.example", "tls", "off")
+	}
+	if to.WebhookURL != "" {
+		w.list("webhook", "name", "laboratory screen", "url", to.WebhookURL, "secret_env", to.WebhookSecretEnv)
+	}
+	if to.Listen != "" {
+		w.table("serve", "listen", to.Listen)
+	}
 }
 
 func (s *Story) folders(w *tomlWriter, base string) {

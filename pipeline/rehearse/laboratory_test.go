@@ -48,6 +48,16 @@ func TestSettingsRead(t *testing.T) {
 	if len(set.Compounds) != 10 || len(set.Folders) != 4 || len(set.Instruments) != 2 || len(set.People) != 3 {
 		t.Errorf("%d compounds, %d folders, %d instruments, %d people", len(set.Compounds), len(set.Folders), len(set.Instruments), len(set.People))
 	}
+	wired, err := settings.Read(NewStory(1).SettingsWith("/data/quillmere", Wires{
+		DataDir: "/var/lib/quillmere", MailHost: "127.0.0.1", MailPort: 2525,
+		WebhookURL: "http://127.0.0.1:8712/hook", WebhookSecretEnv: "QUILLMERE_SECRET", Listen: "127.0.0.1:0",
+	}), "wired.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if wired.Mail.Host != "127.0.0.1" || len(wired.Webhooks) != 1 || wired.People[0].Mail == "" {
+		t.Errorf("mail %+v, webhooks %v, people %v", wired.Mail, wired.Webhooks, wired.People)
+	}
 	for _, f := range set.Folders {
 		if f.Path != "/data/quillmere/"+f.Name || f.MarkerFile != MarkerFile {
 			t.Errorf("folder %s at %s with marker %s", f.Name, f.Path, f.MarkerFile)
