@@ -10,7 +10,6 @@ package watcher
 
 import (
 	"context"
-	"errors"
 	"time"
 )
 
@@ -47,6 +46,8 @@ type State struct {
 	Files    int       // files seen in the last look, litter not counted
 	Settling int       // of these, not settled yet
 	Litter   int       // temporary and lock files ignored
+	Skipped  int       // links, pipes and devices, which are never opened
+	Events   bool      // the operating system tells of changes here; without it only the timer looks
 }
 
 // A Stamp is what a file looked like when it was taken in. Times are compared
@@ -101,44 +102,3 @@ type Wait struct {
 	Size       int64
 	Why        string // a sentence
 }
-
-// Read failures that mean "not now": do not acknowledge, the file is offered again.
-var (
-	ErrChanged  = errors.New("the file is not what it was when it settled")
-	ErrTooLarge = errors.New("the file is larger than allowed")
-)
-
-// A Watcher looks at its roots. Look, Done and Run may be called from
-// different goroutines; looks never overlap.
-type Watcher struct{}
-
-// New makes a watcher. Nothing is read until the first Look.
-func New(roots []Root, opt Options) *Watcher { panic("being written") }
-
-// Look looks at every root once, in parallel. now is the time of the look: a
-// replay passes its own. A file is offered in Report.Files at each look until
-// Done acknowledges it. Look returns an error only when ctx ends.
-func (w *Watcher) Look(ctx context.Context, now time.Time) (Report, error) { panic("being written") }
-
-// Done acknowledges a file of a Report after what came of it was committed.
-func (w *Watcher) Done(root, path string, size int64, mod time.Time) { panic("being written") }
-
-// RunOptions steer Run.
-type RunOptions struct {
-	Every time.Duration    // longest time between two looks; 0: 15 s
-	Now   func() time.Time // clock of the looks; nil: time.Now
-	Poll  bool             // do not ask the operating system for events
-}
-
-// Run looks until ctx ends: at once, on events, on overflow of their queue, on
-// the timer, and as soon as something may settle. handle gets every report; an
-// error of it ends Run and is returned, so a handler that merely could not
-// commit returns nil and leaves the files unacknowledged.
-func (w *Watcher) Run(ctx context.Context, o RunOptions, handle func(context.Context, Report) error) error {
-	panic("being written")
-}
-
-// Read reads a settled file whole, at most max bytes, without ever blocking on
-// a pipe or device put in its place. It fails with ErrChanged when the file is
-// not the one that settled, before or after reading, and with ErrTooLarge.
-func Read(ctx context.Context, f File, max int64) ([]byte, error) { panic("being written") }

@@ -1,0 +1,471 @@
+package watcher
+
+import (
+	"cmp"
+	"context"
+	"errors"
+	"fmt"
+	"io/fs"
+	"os"
+	"path"
+	"path/filepath"
+	"slices"
+	"strings"
+	"time"
+
+	"golang.org/x/text/cases"
+	"golang.org/x/text/unicode/norm"
+)
+
+const (
+	// sweepStands is how long a sweep is worked off before the folder is listed
+	// again, while settled files of it are left: listing 200,000 names for every
+	// thousand files would double the work, and longer would keep tonight's
+	// files waiting behind old ones.
+	sweepStands = 10 * time.Second
+	// emptied is the number of files whose disappearance all at once is taken
+	// for a lost share rather than for tidying, where no marker file can tell.
+	emptied = 5
+	// deepest is the greatest depth of directories below a root.
+	deepest = 64
+	// maxWaits bounds Report.Waits per root.
+	maxWaits = 100
+	// growingLong and emptyLong are when waiting becomes worth a sentence.
+	growingLong = 30 * time.Minute
+	emptyLong   = time.Minute
+)
+
+// listing is what a sweep of the directories found, before it is compared with
+// what was known.
+type listing struct {
+	files  map[string]Stamp
+	dirs   []string          // absolute
+	unread map[string]string // relative directory -> why it could not be read
+	links  []string
+	tally
+}
+
+// look is one look at the root: acknowledgements, visibility, sweep, settling, offers.
+func (r *root) look(ctx context.Context, now time.Time) outcome {
+	if !r.loaded {
+		if err := r.load(ctx); err != nil {
+			return outcome{why: fmt.Sprintf("Folder %s waits: what was taken in earlier cannot be asked (%v).", r.Name, err)}
+		}
+	}
+	var o outcome
+	o.changed = r.acknowledge(now)
+	if o.why = r.blind(); o.why != "" {
+		return o
+	}
+	since := now.Sub(r.sweptAt)
+	if !(r.more && since >= 0 && since < sweepStands) {
+		l, err := r.list(ctx)
+		switch {
+		case ctx.Err() != nil:
+			o.aborted = true
+			return o
+		case err != nil:
+			o.why = fmt.Sprintf("Folder %s (%s) cannot be read: %s.", r.Name, r.Path, reason(err))
+			return o
+		case len(l.files) == 0 && r.MarkerFile == "" && r.present() >= emptied:
+			o.why = fmt.Sprintf("Folder %s (%s) is empty although it held %d files; its share may not be mounted. A marker file (marker_file) would tell.",
+				r.Name, r.Path, r.present())
+			return o
+		}
+		r.compare(now, l, &o)
+		r.settle(now, l)
+		r.waiting = r.waits(now, l)
+	}
+	o.visible = true
+	o.waits = r.waiting
+	r.offer(ctx, now, &o)
+	return o
+}
+
+// load asks once what was taken in before.
+func (r *root) load(ctx context.Context) error {
+	if r.opt.Known != nil {
+		known, err := r.opt.Known(ctx, r.Name)
+		if err != nil {
+			return err
+		}
+		for p, s := range known {
+			r.entries[p] = &entry{stamp: s, taken: true}
+		}
+	}
+	r.loaded = true
+	return nil
+}
+
+// acknowledge applies what Done said. A file that changed after it was offered
+// keeps settling and is reported as changed.
+func (r *root) acknowledge(now time.Time) []Gone {
+	r.mu.Lock()
+	acks := r.acks
+	r.acks = nil
+	r.mu.Unlock()
+	var changed []Gone
+	for _, a := range acks {
+		e := r.entries[a.path]
+		switch {
+		case e == nil:
+			r.entries[a.path] = &entry{stamp: a.stamp, taken: true, sweep: r.sweeps}
+		case e.stamp.same(a.stamp):
+			e.taken, e.pending = true, nil
+		default:
+			changed = append(changed, Gone{Root: r.Name, Path: a.path, Stamp: a.stamp, Taken: true})
+		}
+	}
+	return changed
+}
+
+// blind says why the root cannot be seen, "" when it can.
+func (r *root) blind() string {
+	// The root itself may be a link: that is how shares are often given a stable name.
+	fi, err := r.disk.lstat(r.Path + string(filepath.Separator) + ".")
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return fmt.Sprintf("Folder %s (%s) is not there.", r.Name, r.Path)
+	case err != nil:
+		return fmt.Sprintf("Folder %s (%s) cannot be reached: %s.", r.Name, r.Path, reason(err))
+	case !fi.IsDir():
+		return fmt.Sprintf("Folder %s (%s) is no folder.", r.Name, r.Path)
+	case r.MarkerFile == "":
+		return ""
+	}
+	_, err = r.disk.lstat(filepath.Join(r.Path, filepath.FromSlash(r.MarkerFile)))
+	switch {
+	case errors.Is(err, fs.ErrNotExist):
+		return fmt.Sprintf("Folder %s (%s) is not visible: its marker file %s is not there, so its share is probably not mounted.", r.Name, r.Path, r.MarkerFile)
+	case err != nil:
+		return fmt.Sprintf("Folder %s (%s) is not visible: its marker file %s cannot be reached: %s.", r.Name, r.Path, r.MarkerFile, reason(err))
+	}
+	return ""
+}
+
+// reason is the last part of a file system error, fit for a sentence.
+func reason(err error) string {
+	var pe *fs.PathError
+	if errors.As(err, &pe) {
+		return pe.Err.Error()
+	}
+	return err.Error()
+}
+
+// present counts the files that the last complete sweep saw, or that were
+// known before the first one.
+func (r *root) present() int {
+	n := 0
+	for _, e := range r.entries {
+		if e.sweep == r.sweeps {
+			n++
+		}
+	}
+	return n
+}
+
+// list sweeps the directories. An unreadable directory below the root is
+// noted; only the root's own failure is an error.
+func (r *root) list(ctx context.Context) (*listing, error) {
+	l := &listing{files: make(map[string]Stamp, len(r.entries)), unread: map[string]string{}}
+	if err := r.listDir(ctx, "", 0, l); err != nil {
+		return nil, err
+	}
+	r.mu.Lock()
+	r.dirs = l.dirs
+	r.mu.Unlock()
+	return l, nil
+}
+
+func (r *root) listDir(ctx context.Context, rel string, depth int, l *listing) error {
+	abs := filepath.Join(r.Path, filepath.FromSlash(rel))
+	l.dirs = append(l.dirs, abs)
+	var below []string
+	err := r.disk.list(abs, func(d fs.DirEntry) error {
+		if err := ctx.Err(); err != nil {
+			return err
+		}
+		name := path.Join(rel, d.Name())
+		switch {
+		case d.IsDir():
+			if !isLitterDir(d.Name()) {
+				below = append(below, name)
+			}
+		case name == r.MarkerFile:
+		case isLitter(d.Name(), r.Ignore):
+			l.litter++
+		default:
+			l.add(name, d)
+		}
+		return nil
+	})
+	if err != nil {
+		return err
+	}
+	for _, b := range below {
+		if depth >= deepest {
+			l.unread[b] = fmt.Sprintf("more than %d folders deep", deepest)
+			continue
+		}
+		if err := r.listDir(ctx, b, depth+1, l); err != nil {
+			if ctx.Err() != nil {
+				return ctx.Err()
+			}
+			if !errors.Is(err, fs.ErrNotExist) { // removed while we looked
+				l.unread[b] = reason(err)
+			}
+		}
+	}
+	return nil
+}
+
+// add notes one thing that is no directory.
+func (l *listing) add(name string, d fs.DirEntry) {
+	// Some network file systems do not tell the type with the name; Info does.
+	fi, err := d.Info()
+	if err != nil {
+		return // removed while we looked
+	}
+	if !fi.Mode().IsRegular() {
+		l.skipped++
+		if fi.Mode()&os.ModeSymlink != 0 {
+			l.links = append(l.links, name)
+		}
+		return
+	}
+	l.files[name] = stampOf(fi)
+	l.tally.files++
+	if fi.ModTime().After(l.newest) {
+		l.newest = fi.ModTime()
+	}
+}
+
+// compare brings the entries up to what the sweep saw.
+func (r *root) compare(now time.Time, l *listing, o *outcome) {
+	r.sweeps++
+	r.sweptAt = now
+	var fresh []string
+	for p, s := range l.files {
+		e := r.entries[p]
+		switch {
+		case e == nil:
+			r.entries[p] = &entry{stamp: s, sweep: r.sweeps, pending: &pending{first: now, since: now, sweep: r.sweeps}}
+			fresh = append(fresh, p)
+			continue
+		case e.stamp.same(s):
+			if d := e.pending; d != nil && d.since.After(now) {
+				d.since, d.retry = now, now // our clock was put back
+			}
+		default:
+			if e.taken {
+				o.changed = append(o.changed, Gone{Root: r.Name, Path: p, Stamp: e.stamp, Taken: true})
+			}
+			first := now
+			if e.pending != nil {
+				first = e.pending.first
+			}
+			e.stamp, e.taken = s, false
+			e.pending = &pending{first: first, since: now, sweep: r.sweeps}
+		}
+		e.sweep = r.sweeps
+	}
+	r.departed(fresh, l, o)
+}
+
+// departed finds what is gone, and what only changed the spelling of its name.
+func (r *root) departed(fresh []string, l *listing, o *outcome) {
+	byFold := map[string]string{}
+	for _, p := range fresh {
+		byFold[fold(p)] = p
+	}
+	for p, e := range r.entries {
+		if e.sweep == r.sweeps || l.unreadable(p) {
+			continue
+		}
+		delete(r.entries, p)
+		known := r.sweeps == 1 // gone before this program began to look; it saw nothing vanish
+		if to, ok := byFold[fold(p)]; ok && e.taken && r.entries[to].stamp.same(e.stamp) {
+			e.sweep = r.sweeps
+			r.entries[to] = e
+			o.renamed = append(o.renamed, Renamed{Root: r.Name, From: p, To: to})
+			continue
+		}
+		if !known {
+			o.vanished = append(o.vanished, Gone{Root: r.Name, Path: p, Stamp: e.stamp, Taken: e.taken})
+		}
+	}
+	slices.SortFunc(o.vanished, func(a, b Gone) int { return strings.Compare(a.Path, b.Path) })
+	slices.SortFunc(o.changed, func(a, b Gone) int { return strings.Compare(a.Path, b.Path) })
+}
+
+// fold is a name without regard to case and Unicode form.
+func fold(p string) string {
+	ascii := true
+	for i := 0; i < len(p); i++ {
+		ascii = ascii && p[i] < 0x80
+	}
+	if ascii {
+		return strings.ToLower(p)
+	}
+	return norm.NFC.String(cases.Fold().String(norm.NFC.String(p)))
+}
+
+// unreadable reports whether a path lies below a directory that could not be read.
+func (l *listing) unreadable(p string) bool {
+	if len(l.unread) == 0 {
+		return false
+	}
+	for dir := path.Dir(p); dir != "." && dir != "/"; dir = path.Dir(dir) {
+		if _, ok := l.unread[dir]; ok {
+			return true
+		}
+	}
+	return false
+}
+
+// settle collects what stands still, newest first.
+func (r *root) settle(now time.Time, l *listing) {
+	r.ready = r.ready[:0]
+	r.seen = l.tally
+	for p, e := range r.entries {
+		if e.taken || e.sweep != r.sweeps {
+			continue
+		}
+		if r.still(p, e, now) {
+			r.ready = append(r.ready, readyFile{p, e})
+		} else {
+			r.seen.settling++
+		}
+	}
+	slices.SortFunc(r.ready, func(a, b readyFile) int {
+		return cmp.Or(b.stamp.Mod.Compare(a.stamp.Mod), cmp.Compare(a.path, b.path))
+	})
+}
+
+// still reports whether a file has settled, or may be offered early.
+func (r *root) still(p string, e *entry, now time.Time) bool {
+	if e.stamp.Size == 0 {
+		return false // an empty file is one that somebody is about to fill
+	}
+	if e.pending.sweep < r.sweeps && now.Sub(e.pending.since) >= r.Settle {
+		return true
+	}
+	return matchesAny(path.Base(p), r.EndMarks)
+}
+
+// offer opens settled files, newest first, until the report of this root is full.
+func (r *root) offer(ctx context.Context, now time.Time, o *outcome) {
+	left := 0
+	for _, f := range r.ready {
+		p, e := f.path, f.entry
+		if e.taken || now.Before(e.pending.retry) || !r.still(p, e, now) {
+			continue
+		}
+		if len(o.files) >= r.opt.MaxFiles || ctx.Err() != nil {
+			left++
+			continue
+		}
+		if r.opens(p, e, now) {
+			o.files = append(o.files, r.file(p, e, now))
+		}
+	}
+	o.more = left > 0
+	r.nextLook(now, o)
+}
+
+func (r *root) abs(p string) string { return filepath.Join(r.Path, filepath.FromSlash(p)) }
+
+func (r *root) file(p string, e *entry, now time.Time) File {
+	early := e.pending.sweep == r.sweeps || now.Sub(e.pending.since) < r.Settle
+	return File{Root: r.Name, Path: p, Abs: r.abs(p), Size: e.stamp.Size, ModTime: e.stamp.Mod, Seen: e.pending.first, Settled: now, Early: early}
+}
+
+// opens tries to open a file that stands still. A file that cannot be opened
+// is tried again after growing pauses; one that is different by now begins to
+// settle anew.
+func (r *root) opens(p string, e *entry, now time.Time) bool {
+	fi, err := r.disk.probe(r.abs(p))
+	d := e.pending
+	if err != nil {
+		if d.denied.IsZero() {
+			d.denied = now
+		}
+		d.tries++
+		d.why = reason(err)
+		d.retry = now.Add(min(5*time.Minute, max(r.Settle, time.Second)<<min(d.tries-1, 10)))
+		return false
+	}
+	d.denied, d.tries, d.why = time.Time{}, 0, ""
+	if s := stampOf(fi); !s.same(e.stamp) {
+		e.stamp = s
+		d.since, d.sweep = now, r.sweeps
+		return false
+	}
+	return true
+}
+
+// nextLook finds when the passing of time alone may settle something.
+func (r *root) nextLook(now time.Time, o *outcome) {
+	for _, e := range r.entries {
+		d := e.pending
+		if e.taken || d == nil || e.stamp.Size == 0 || e.sweep != r.sweeps {
+			continue
+		}
+		due := d.since.Add(r.Settle)
+		if due.Before(d.retry) {
+			due = d.retry
+		}
+		if d.sweep < r.sweeps && !due.After(now) {
+			continue // settled and offered, or left for want of room
+		}
+		if !due.After(now) {
+			due = now.Add(time.Millisecond) // settle = 0 still needs a second look
+		}
+		if o.next.IsZero() || due.Before(o.next) {
+			o.next = due
+		}
+	}
+}
+
+// waits says why files have not settled for longer than is usual.
+func (r *root) waits(now time.Time, l *listing) []Wait {
+	var out []Wait
+	for dir, why := range l.unread {
+		out = append(out, Wait{Root: r.Name, Path: dir, Since: now, Why: fmt.Sprintf("Folder %s below %s cannot be read: %s.", dir, r.Name, why)})
+	}
+	for p, e := range r.entries {
+		d := e.pending
+		if e.taken || d == nil || e.sweep != r.sweeps {
+			continue
+		}
+		w := Wait{Root: r.Name, Path: p, Since: d.first, Size: e.stamp.Size}
+		switch {
+		case !d.denied.IsZero():
+			w.Since = d.denied
+			w.Why = fmt.Sprintf("Cannot read %s for %s (%s).", p, span(now.Sub(d.denied)), d.why)
+		case e.stamp.Size == 0 && now.Sub(d.since) >= emptyLong:
+			w.Why = fmt.Sprintf("%s is empty.", p)
+		case now.Sub(d.first) >= growingLong && now.Sub(d.since) < r.Settle:
+			w.Why = fmt.Sprintf("%s is still growing (%d bytes); waiting.", p, e.stamp.Size)
+		default:
+			continue
+		}
+		out = append(out, w)
+	}
+	for _, p := range l.links {
+		out = append(out, Wait{Root: r.Name, Path: p, Since: now, Why: fmt.Sprintf("%s is a link and is not followed; declare its target as a folder of its own.", p)})
+	}
+	slices.SortStableFunc(out, func(a, b Wait) int { return cmp.Or(a.Since.Compare(b.Since), strings.Compare(a.Path, b.Path)) })
+	return out[:min(len(out), maxWaits)]
+}
+
+// span writes a length of time as people say it.
+func span(d time.Duration) string {
+	switch {
+	case d < time.Minute:
+		return fmt.Sprintf("%d s", int(d.Seconds()))
+	case d < 2*time.Hour:
+		return fmt.Sprintf("%d min", int(d.Minutes()))
+	}
+	return fmt.Sprintf("%d h", int(d.Hours()))
+}
