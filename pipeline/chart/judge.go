@@ -79,7 +79,7 @@ func NewChart(b Baseline, r Rules) *Chart {
 	c.individual = studentQuantile(r.Individuals, b.DOF)
 	c.moving = math.Sqrt2 * studentQuantile(r.MovingRange/math.Sqrt2, b.DOF) * math.Sqrt(1-b.Phi)
 	c.weighted = studentQuantile(r.EWMAWidth, b.DOF)
-	c.slack = r.CusumSlack + slackForCentre*c.centreRatio
+	c.slack = r.CusumSlack + centreShare(b, slackForCentre)
 	if r.HeadStart {
 		c.up.sum, c.down.sum = r.CusumDecision/2, r.CusumDecision/2
 	}
@@ -97,6 +97,18 @@ const (
 	sideForCentre  = 0.5 // how far beyond the centre a value must lie to count for a side
 	meanForCentre  = 0.5 // taken into the variance of the weighted mean
 )
+
+// centreShare is the common share; while a baseline is unproven the whole uncertainty
+// of its centre counts, for there is no Student factor yet that would cover part of it.
+func centreShare(b Baseline, share float64) float64 {
+	if b.SD <= 0 {
+		return 0
+	}
+	if b.Stage == Unproven {
+		share = 1
+	}
+	return share * b.CentreSD / b.SD
+}
 
 // tally is one side of a cumulative sum.
 type tally struct {
@@ -217,7 +229,7 @@ func (c *Chart) weightedMean(j *Judgement, night int, y, sd float64) {
 	c.ewmaVar = (1-w)*(1-w)*c.ewmaVar + w*w*rel*rel + 2*w*(1-w)*carried
 	c.ewmaCov = w*rel*rel + (1-w)*carried
 	c.ewma = (1-w)*c.ewma + w*y
-	u := meanForCentre * c.centreRatio
+	u := centreShare(c.b, meanForCentre)
 	half := c.weighted * c.b.SD * math.Sqrt(c.ewmaVar+u*u)
 	show := c.b.Scale.toShow
 	j.EWMA, j.EWMALow, j.EWMAHigh = show(c.ewma), show(c.b.Centre-half), show(c.b.Centre+half)

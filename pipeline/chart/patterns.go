@@ -105,7 +105,7 @@ func (c *Chart) patterns(j *Judgement) {
 	}
 	same(r.TwoOfThree, 2, 3, outer, twoOfThreeName())
 	same(r.FourOfFive, 4, 5, inner, fourOfFiveName())
-	same(r.OneSide > 0, r.OneSide, r.OneSide, sideForCentre*c.centreRatio, oneSideName(r.OneSide))
+	same(r.OneSide > 0, r.OneSide, r.OneSide, centreShare(c.b, sideForCentre), oneSideName(r.OneSide))
 	same(r.TwoBeyond, 2, 2, outer, twoBeyondName())
 	same(r.FourBeyond, 4, 4, inner, fourBeyondName())
 	if r.Opposite && w.n >= 2 && math.Abs(w.at(0)) > outer && math.Abs(w.at(1)) > outer && w.at(0)*w.at(1) < 0 {
@@ -129,7 +129,7 @@ func (c *Chart) patterns(j *Judgement) {
 
 func (c *Chart) patternFlag(j *Judgement, name string, since int, sign float64, need, of int, border float64) {
 	where := side(sign) + " the centre"
-	if border > sideForCentre*c.centreRatio {
+	if border > centreShare(c.b, sideForCentre) {
 		where = fmt.Sprintf("more than %.2g standard deviations %s the centre", border, side(sign))
 	}
 	if need == of {
