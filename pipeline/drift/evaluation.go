@@ -102,4 +102,18 @@ type Evaluation struct {
 	Observed     []string      `json:"observed"`     // cells with an observation in this night
 	Inside       []string      `json:"inside"`       // observed cells whose values lie within their limits
 	Outside      []string      `json:"outside"`
+	Watched      []Watched     `json:"watched,omitempty"` // parallel to History.Watch
+}
+
+// Watched says what one night alone says of a disturbance that was found earlier.
+type Watched struct {
+	CaseID int64 `json:"case_id"`
+	Data   bool  `json:"data"` // a cell it acts on was observed tonight
+	// Expected is how many standard deviations the disturbance would show tonight
+	// if it had gone on; below about 2 the night says nothing about it.
+	Expected float64 `json:"expected"`
+	// Share is tonight's estimate of it as a share of what was expected, 1: goes on, 0: gone.
+	Share float64 `json:"share"`
+	// Inside: it would show, and it does not.
+	Inside bool `json:"inside"`
 }

@@ -126,6 +126,13 @@ type History struct {
 	Uses         []Use
 	Events       []Event
 	Masks        []Mask
+	Watch        []Watch // open cases to be looked at in this night
+}
+
+// A Watch asks whether the disturbance of an open case still shows.
+type Watch struct {
+	CaseID    int64
+	Candidate Candidate
 }
 
 // Rules are the choices of an evaluation; DefaultRules fills what is zero.
