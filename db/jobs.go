@@ -3,6 +3,9 @@ package db
 import (
 	"context"
 	"fmt"
+	"time"
+
+	"github.com/jackc/pgx/v5"
 )
 
 // ResetRunningJobs gives back jobs whose worker is gone and says how many.
@@ -25,4 +28,52 @@ func (s *Store) JobsOpen(ctx context.Context, queue string) (int, error) {
 		return 0, fmt.Errorf("counting open jobs: %w", safe(err))
 	}
 	return n, nil
+}
+
+// FirstStandingReference gives the earliest current result that is not held
+// of a reference lot on an instrument, of a night before the given one; 0 when
+// there is none. Its limit spectra are the archive later nights are read against.
+func (s *Store) FirstStandingReference(ctx context.Context, q Querier, instrument, compound, lot, before string) (int64, error) {
+	var id *int64
+	err := s.on(q).QueryRow(ctx, `
+		SELECT (SELECT r.id FROM pkvigil.result r JOIN pkvigil.sample_set s ON s.id = r.set_id
+		        WHERE s.instrument = $1 AND s.compound = $2 AND s.lot = $3 AND s.kind = 'reference' AND s.night < $4::date
+		          AND r.verdict IN ('stands', 'stands-noted')
+		        ORDER BY s.night, s.key, r.set_revision, r.id LIMIT 1)`, instrument, compound, lot, before).Scan(&id)
+	if err != nil {
+		return 0, fmt.Errorf("finding archived spectra: %w", safe(err))
+	}
+	if id == nil {
+		return 0, nil
+	}
+	return *id, nil
+}
+
+// DeliveriesOf gives the ids of the deliveries of a message.
+func (s *Store) DeliveriesOf(ctx context.Context, q Querier, messageID int64) ([]int64, error) {
+	return s.ids(ctx, q, `SELECT id FROM pkvigil.delivery WHERE message_id = $1 ORDER BY id`, messageID)
+}
+
+// ids reads one column of ids.
+func (s *Store) ids(ctx context.Context, q Querier, sql string, args ...any) ([]int64, error) {
+	rows, err := s.on(q).Query(ctx, sql, args...)
+	if err != nil {
+		return nil, safe(err)
+	}
+	out, err := pgx.CollectRows(rows, pgx.RowTo[int64])
+	if err != nil {
+		return nil, fmt.Errorf("reading ids: %w", safe(err))
+	}
+	return out, nil
+}
+
+// LastArrival gives the newest moment a file of a root was first seen at or
+// before a moment; zero when there is none.
+func (s *Store) LastArrival(ctx context.Context, q Querier, root string, until time.Time) (time.Time, error) {
+	var t *time.Time
+	err := s.on(q).QueryRow(ctx, `SELECT max(seen_at) FROM pkvigil.file WHERE root = $1 AND seen_at <= $2`, root, until).Scan(&t)
+	if err != nil {
+		return time.Time{}, fmt.Errorf("finding the last arrival: %w", safe(err))
+	}
+	return when(t), nil
 }

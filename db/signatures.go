@@ -2,7 +2,6 @@ package db
 
 import (
 	"context"
-	"encoding/json"
 	"errors"
 	"io"
 	"time"
@@ -13,46 +12,6 @@ import (
 )
 
 var errLater = errors.ErrUnsupported
-
-// Migrate brings the schema to the newest version this program knows, the job queue's tables included, under an
-// advisory lock. It refuses a schema newer than the program. from and to are the versions before and after.
-func (s *Store) Migrate(ctx context.Context) (from, to int, err error) { return 0, 0, errLater }
-
-// SchemaVersion gives the version of the database's schema, 0 when there is none.
-func (s *Store) SchemaVersion(ctx context.Context) (int, error) { return 0, errLater }
-
-// CheckSchema is nil when the database has exactly the schema this program knows; the error says what to do.
-func (s *Store) CheckSchema(ctx context.Context) error { return errLater }
-
-// CreateReader makes a login role that may read schema readout and nothing else.
-func (s *Store) CreateReader(ctx context.Context, login, password string) error { return errLater }
-
-// PutSettings stores a settings file, once per content, and gives its id.
-func (s *Store) PutSettings(ctx context.Context, toml []byte, program string, at time.Time) (int64, error) {
-	return 0, errLater
-}
-
-// Settings gives a stored settings file.
-func (s *Store) Settings(ctx context.Context, id int64) ([]byte, error) { return nil, errLater }
-
-// ClaimRoot takes or renews the lease on a root until at+ttl. held is false when another holder's lease runs; other says whose.
-func (s *Store) ClaimRoot(ctx context.Context, root string, h Holder, at time.Time, ttl time.Duration) (held bool, other Holder, err error) {
-	return false, Holder{}, errLater
-}
-
-// ReleaseRoots ends all leases of a holder.
-func (s *Store) ReleaseRoots(ctx context.Context, h Holder) error { return errLater }
-
-// PutRootState stores what the last look at a root found.
-func (s *Store) PutRootState(ctx context.Context, st RootState) error { return errLater }
-
-// RootStates gives the states of all roots by name.
-func (s *Store) RootStates(ctx context.Context, q Querier) ([]RootState, error) { return nil, errLater }
-
-// KnownFiles gives the newest revision of every path of a root.
-func (s *Store) KnownFiles(ctx context.Context, root string) (map[string]Stamp, error) {
-	return nil, errLater
-}
 
 // TakeFile stores one file, its bytes and its records, and fills in the ids.
 func (s *Store) TakeFile(ctx context.Context, tx pgx.Tx, t *Taken) error { return errLater }
@@ -396,16 +355,6 @@ func (s *Store) Deeds(ctx context.Context, q Querier, object string, limit int) 
 	return nil, errLater
 }
 
-// Watermark gives the state stored under a key; ok is false when there is none.
-func (s *Store) Watermark(ctx context.Context, q Querier, key string, into any) (ok bool, err error) {
-	return false, errLater
-}
-
-// PutWatermark stores a state under a key.
-func (s *Store) PutWatermark(ctx context.Context, tx pgx.Tx, key string, state any, at time.Time) error {
-	return errLater
-}
-
 // NightCounts gives counts per night and instrument, nights from..to inclusive.
 func (s *Store) NightCounts(ctx context.Context, q Querier, from, to string) ([]NightCount, error) {
 	return nil, errLater
@@ -431,20 +380,3 @@ func (s *Store) CheckUse(ctx context.Context, q Querier, from, to string) ([]Che
 
 // Dump writes every table in a canonical form: no surrogate ids, no wall times, sorted.
 func (s *Store) Dump(ctx context.Context, w io.Writer) error { return errLater }
-
-// Channels of NOTIFY. Payloads are small JSON objects.
-const (
-	ChannelFile   = "pkvigil_file"
-	ChannelResult = "pkvigil_result"
-	ChannelCase   = "pkvigil_case"
-)
-
-// Notify tells listeners when the transaction commits. Results, cases and batches of files tell by themselves.
-func (s *Store) Notify(ctx context.Context, tx pgx.Tx, channel string, payload any) error {
-	return errLater
-}
-
-// Listen calls f for each notice on the channels until ctx ends or the connection is lost.
-func (s *Store) Listen(ctx context.Context, channels []string, f func(channel string, payload json.RawMessage)) error {
-	return errLater
-}
