@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 	"time"
 
@@ -280,9 +281,12 @@ func (r *reader) settle(f *facts) {
 // a damaged file are bounded.
 func (r *reader) remark(line int, format string, args ...any) {
 	const most = 200
+	m := parse.Remark{Line: line, Text: fmt.Sprintf(format, args...)}
 	switch {
+	case slices.Contains(r.remarks, m): // traces on one axis repeat its remarks
+		return
 	case len(r.remarks) < most:
-		r.remarks = append(r.remarks, parse.Remark{Line: line, Text: fmt.Sprintf(format, args...)})
+		r.remarks = append(r.remarks, m)
 	case len(r.remarks) == most:
 		r.remarks = append(r.remarks, parse.Remark{Text: "further remarks are left out"})
 	}

@@ -1,0 +1,538 @@
+package delimited
+
+import (
+	"bytes"
+	"fmt"
+	"slices"
+	"strings"
+
+	"pkvigil/parse"
+)
+
+// Meanings of the columns of a labelled table.
+const (
+	colNone = iota
+	colRung
+	colPosition
+	colSample
+	colNumber
+	colPH
+	colNominal
+	colMilliVolt
+	colTemperature
+	colElectrode
+	colMeter
+	colTime
+	colDate
+	colClock
+	colElapsed
+	colSD
+	colSlope
+	colPoints
+	colLot
+	colBuffer
+	colSet
+	colRole
+	colCompound
+	colDilution
+	colIonic
+	colCosolvent
+	colPercent
+	colKind
+	colResource
+	colInstrument
+	colText
+	colBy
+	colNight
+	colSlot
+	colWavelength
+	colOrdinate
+	colPath
+	colBandwidth
+	colCount
+)
+
+// colWords lists the whole folded names of a column, units off (common
+// practice, no source).
+func colWords(c int) string {
+	switch c {
+	case colRung:
+		return "rung rungs step stufe stufen solution losung solucion palier"
+	case colPosition:
+		return "position pos vial vial_position well tray_position tray cell_position platz platte_position posicion posizione cuvette_no slot_no tube"
+	case colSample:
+		return "sample sample_name sample_id label id key probe probenname echantillon muestra campione amostra monster prov name"
+	case colNumber:
+		return "# no nr number nummer numero index n row zeile"
+	case colNominal:
+		return "nominal nominal_ph ph_nominal certified certified_ph buffer_ph ph_buffer ph_of_buffer standard_ph sollwert soll_ph ph_soll assigned assigned_ph buffer_value"
+	case colPH:
+		return "ph ph_value ph_wert phwert ph_reading reading_ph measured_ph ph_measured valeur_ph valor_ph valore_ph"
+	case colMilliVolt:
+		return "mv e_mv mv_reading reading_mv potential potential_mv emf millivolt millivolts spannung potentiel potencial potenziale"
+	case colTemperature:
+		return "temperature temp t temperature_c temp_c t_c temperatur temperatura temperatuur lampotila cell_temperature sample_temperature solution_temperature"
+	case colElectrode:
+		return "electrode electrode_id elektrode electrodo elettrodo eletrodo ph_electrode"
+	case colMeter:
+		return "meter ph_meter meter_id phmeter phmetre"
+	case colTime:
+		return "at read_at time_stamp timestamp date_time datetime date_and_time measured measured_at measured_on recorded recorded_at logged logged_at calibrated calibrated_at calibration_time when datum_uhrzeit datum_zeit zeitpunkt date_heure fecha_hora"
+	case colDate:
+		return "date datum fecha dato pvm"
+	case colClock:
+		return "time time_of_day uhrzeit zeit heure hora ora tid czas"
+	case colElapsed:
+		return "elapsed elapsed_time t_s time_s time_min seconds minutes"
+	case colSD:
+		return "sd s std scatter standard_deviation"
+	case colSlope:
+		return "slope drift slope_per_min drift_per_min ph_per_min"
+	case colPoints:
+		return "points readings"
+	case colLot:
+		return "lot buffer_lot lot_number lot_no lot_nr bottle buffer_bottle charge batch chargennummer ch_b compound_lot"
+	case colBuffer:
+		return "buffer puffer tampon tampone standard buffer_recipe recipe medium calibration_buffer buffer_name pufferlosung"
+	case colSet:
+		return "set set_name sample_set series satz"
+	case colRole:
+		return "role type sample_type what rolle"
+	case colCompound:
+		return "compound substance dye indicator substanz farbstoff material analyte"
+	case colDilution:
+		return "dilution dilution_factor verdunnung dil factor"
+	case colIonic:
+		return "ionic_strength i ionenstarke force_ionique"
+	case colCosolvent:
+		return "cosolvent co_solvent solvent losungsmittel"
+	case colPercent:
+		return "cosolvent_pct cosolvent_percent cosolvent_% percent % pct solvent_percent volume_percent vol_%"
+	case colKind:
+		return "kind event event_kind category art"
+	case colResource:
+		return "resource thing object item device part"
+	case colInstrument:
+		return "instrument instrument_name gerat spectrometer photometer"
+	case colText:
+		return "text note notes comment remark remarks description what_happened bemerkung kommentar"
+	case colBy:
+		return "by who person operator user signed bediener von"
+	case colNight:
+		return "night nacht nuit noche"
+	case colSlot:
+		return "slot bracket turn"
+	case colWavelength:
+		return "wavelength wave_length wl lambda nm wellenlange longueur_d_onde longitud_de_onda wavelength_nm wavenumber wellenzahl"
+	case colPath:
+		return "path path_length pathlength schichtdicke"
+	case colBandwidth:
+		return "bandwidth spectral_bandwidth sbw bandbreite"
+	}
+	return ""
+}
+
+// column tells what the head of a column means, with its unit.
+func column(head string) (kind int, unit string) {
+	bare, unit := unitOf(head)
+	f := fold(bare)
+	w := strings.ReplaceAll(strings.TrimSpace(f), " ", "_")
+	if strings.EqualFold(unit, "mV") {
+		return colMilliVolt, unit
+	}
+	for c := colRung; c < colCount; c++ {
+		if !oneOf(w, colWords(c)) {
+			continue
+		}
+		switch {
+		case (c == colClock || c == colTime || c == colTemperature && w == "t") && timeUnit(unit) > 0:
+			return colElapsed, unit
+		case c == colElapsed && unit == "":
+			if _, u, ok := strings.Cut(w, "_"); ok && timeUnit(u) > 0 {
+				unit = u
+			} else if timeUnit(w) > 0 {
+				unit = w
+			}
+		case c == colTemperature && w == "t" && unit == "":
+			continue
+		}
+		return c, unit
+	}
+	switch q := quantity(head); {
+	case strings.HasPrefix(f, " ph ") && len(f) < 24 && !strings.Contains(f, "meter"):
+		return colPH, unit
+	case q == qWavelength:
+		return colWavelength, unit
+	case ordinate(q) && q != qOther:
+		return colOrdinate, unit
+	}
+	return colNone, unit
+}
+
+// timeUnit gives the seconds in a unit of elapsed time, 0 if it is none.
+func timeUnit(u string) float64 {
+	switch strings.ToLower(strings.TrimSpace(u)) {
+	case "s", "sec", "secs", "second", "seconds", "sekunden":
+		return 1
+	case "min", "mins", "minute", "minutes", "minuten":
+		return 60
+	case "h", "hour", "hours", "stunden":
+		return 3600
+	case "ms":
+		return 1e-3
+	}
+	return 0
+}
+
+// A table is a file with a line of heads that say what the columns mean.
+type table struct {
+	d      dialect
+	class  string // "ph", "calibration", "sheet", "events", "plan", "long" or "" where the heads fit nothing
+	header int    // index of the line of heads
+	heads  []string
+	units  []string
+	col    [colCount]int // index of the column of each meaning, -1
+	rows   []tableRow
+}
+
+type tableRow struct {
+	line  int // 1-based line the row ends on
+	cells [][]byte
+}
+
+// at is the trimmed cell of a meaning in a row, nil without one.
+func (t *table) at(row tableRow, meaning int) []byte {
+	c := t.col[meaning]
+	if c < 0 || c >= len(row.cells) {
+		return nil
+	}
+	return row.cells[c]
+}
+
+func (t *table) text(row tableRow, meaning int) string { return parse.Clean(t.at(row, meaning)) }
+func (t *table) has(meaning int) bool                  { return t.col[meaning] >= 0 }
+
+// field names a column in messages.
+func (t *table) field(meaning int) string {
+	if c := t.col[meaning]; c >= 0 && c < len(t.heads) {
+		return "column " + parse.Show(t.heads[c])
+	}
+	return ""
+}
+
+// table finds the line of heads of a labelled table. want is the kind the
+// file must be, or "" for any. Nil where no line qualifies.
+func (r *reader) table(want string) *table {
+	const search = 120
+	var best *table
+	for i := range min(search, len(r.src.spans)) {
+		line := r.src.line(i)
+		if r.lay.HeaderLine > 0 && i != r.lay.HeaderLine-1 || blank(line) || len(line) > 8192 {
+			continue
+		}
+		for _, delim := range [...]byte{'\t', ';', ',', '|', ' '} {
+			if d := delimiterByte(r.lay.Delimiter); d != 0 && d != delim || delim == ' ' && (best != nil || bytes.ContainsAny(line, "\t;,|")) {
+				continue
+			}
+			t := r.headed(i, delim)
+			if t == nil || want != "" && !t.serves(want) {
+				continue
+			}
+			if t.class == "" || want != "" {
+				t.class = classOf(want, t.class)
+			}
+			if best == nil || t.known() > best.known() {
+				best = t
+			}
+		}
+		if best != nil {
+			break
+		}
+	}
+	if best != nil {
+		r.readRows(best)
+	}
+	return best
+}
+
+func classOf(want, found string) string {
+	switch want {
+	case "ph-table", "ph-series":
+		return "ph"
+	case "":
+		return found
+	}
+	return want
+}
+
+// headed reads a line as heads; nil unless they fit one of the kinds.
+func (r *reader) headed(i int, delim byte) *table {
+	t := &table{d: dialect{delim: delim, point: '.', marks: r.lay.Overflow}, header: i}
+	for c := range t.col {
+		t.col[c] = -1
+	}
+	t.heads = t.d.headCells(r.src.line(i))
+	if len(t.heads) < 2 {
+		return nil
+	}
+	named := 0
+	for c, h := range t.heads {
+		meaning, unit := column(h)
+		t.units = append(t.units, unit)
+		if len(r.lay.Columns) > c {
+			meaning = declaredMeaning(r.lay.Columns[c], meaning)
+		}
+		if _, k := t.d.number([]byte(h)); k >= parse.Exponential {
+			return nil
+		}
+		if meaning != colNone {
+			named++
+			if t.col[meaning] < 0 {
+				t.col[meaning] = c
+			}
+		}
+	}
+	if 2*named < len(t.heads) && len(r.lay.Columns) == 0 {
+		return nil
+	}
+	t.class = t.classify()
+	return t
+}
+
+// declaredMeaning translates a word of Layout.Columns.
+func declaredMeaning(word string, found int) int {
+	switch word {
+	case "":
+		return found
+	case "skip":
+		return colNone
+	case "label":
+		return colSample
+	case "ph":
+		return colPH
+	case "millivolt":
+		return colMilliVolt
+	case "temperature":
+		return colTemperature
+	case "time":
+		if found == colElapsed || found == colClock || found == colDate {
+			return found
+		}
+		return colTime
+	case "wavelength":
+		return colWavelength
+	case "absorbance":
+		return colOrdinate
+	}
+	if k, _ := column(word); k != colNone {
+		return k
+	}
+	return found
+}
+
+func (t *table) known() int {
+	n := 0
+	for _, c := range t.col {
+		if c >= 0 {
+			n++
+		}
+	}
+	return n
+}
+
+// classify tells what kind of file the heads make, "" for none.
+func (t *table) classify() string {
+	time := t.has(colTime) || t.has(colDate) || t.has(colClock)
+	place := t.has(colRung) || t.has(colPosition) || t.has(colSample) || t.has(colNumber)
+	switch {
+	case t.has(colWavelength):
+		if t.has(colOrdinate) && (t.has(colSample) || t.has(colRung) || t.has(colPosition) || t.has(colPH) && t.col[colPH] < t.col[colOrdinate]) {
+			return "long"
+		}
+		return ""
+	case t.has(colNight) && (t.has(colSet) || t.has(colCompound)):
+		return "plan"
+	case time && t.has(colKind) && (t.has(colResource) || t.has(colText) || t.has(colBy) || t.has(colInstrument)):
+		return "events"
+	case t.has(colMilliVolt) && (t.has(colPH) || t.has(colNominal)) && (t.has(colLot) || t.has(colBuffer) || t.has(colNominal)) && !t.has(colRung):
+		return "calibration"
+	case t.has(colPH) && (time || t.has(colElapsed) || t.has(colMilliVolt) || t.has(colElectrode) || t.has(colTemperature)) && !t.has(colCompound) && !t.has(colDilution):
+		return "ph"
+	case place && (t.has(colSet) || t.has(colCompound) || t.has(colDilution) || t.has(colIonic) || t.has(colCosolvent) || t.has(colRole) || t.has(colLot) || t.has(colBuffer)):
+		return "sheet"
+	case place && t.has(colPH):
+		return "ph"
+	}
+	return ""
+}
+
+// serves tells whether a table can be read as the kind wanted.
+func (t *table) serves(want string) bool {
+	switch want {
+	case "ph", "ph-table", "ph-series":
+		return t.has(colPH) || t.has(colMilliVolt)
+	case "calibration":
+		return t.has(colMilliVolt) && (t.has(colPH) || t.has(colNominal))
+	case "sheet":
+		return t.has(colPosition) || t.has(colRung) || t.has(colSample) || t.has(colNumber) || t.has(colSet)
+	case "events":
+		return t.has(colTime) || t.has(colDate)
+	case "plan":
+		return t.has(colNight) || t.has(colDate)
+	}
+	return t.class == want
+}
+
+// readRows reads the rows below the heads: RFC 4180 records, which may span
+// lines inside quotes.
+func (r *reader) readRows(t *table) {
+	const span = 64
+	gap := 0
+	for i := t.header + 1; i < len(r.src.spans); i++ {
+		line := r.src.line(i)
+		if blank(line) {
+			gap++
+			continue
+		}
+		if len(t.rows) > 0 && marker(line) == "end" {
+			break
+		}
+		for j := i; unclosed(line) && t.d.delim != ' ' && j+1 < len(r.src.spans) && j-i < span; {
+			j++
+			joined := r.src.text[r.src.spans[i].from:r.src.spans[j].to]
+			if !unclosed(joined) {
+				line, i = joined, j
+				break
+			}
+		}
+		cells := t.d.split(line, nil)
+		if len(t.rows) == 0 && t.unitsRow(cells) {
+			continue
+		}
+		t.rows = append(t.rows, tableRow{line: i + 1, cells: cells})
+	}
+	if gap > 0 && len(t.rows) > 0 {
+		r.say(0, "%d blank lines are passed over", gap)
+	}
+	t.d.point = r.pointOf(t)
+	r.found.Delimiter, r.found.Decimal = delimiterWord(t.d.delim), string(rune(t.d.point))
+	r.found.HeaderLine = t.header + 1
+}
+
+// unitsRow tells whether the first row below the heads gives their units.
+func (t *table) unitsRow(cells [][]byte) bool {
+	text := make([]string, len(cells))
+	for i, c := range cells {
+		text[i] = string(c)
+	}
+	if !allUnits(text) {
+		return false
+	}
+	for i, u := range text {
+		if i < len(t.units) && t.units[i] == "" {
+			t.units[i] = strings.Trim(u, "[]() ")
+			if timeUnit(t.units[i]) > 0 && (t.col[colClock] == i || t.col[colTime] == i) {
+				t.col[colElapsed], t.col[colClock], t.col[colTime] = i, drop(t.col[colClock], i), drop(t.col[colTime], i)
+			}
+		}
+	}
+	return true
+}
+
+func drop(have, i int) int {
+	if have == i {
+		return -1
+	}
+	return have
+}
+
+func unclosed(line []byte) bool { return bytes.Count(line, []byte{'"'})%2 == 1 }
+
+// pointOf decides the decimal sign of a table from its numeric columns.
+func (r *reader) pointOf(t *table) byte {
+	if r.lay.Decimal != "" {
+		return r.lay.Decimal[0]
+	}
+	points, commas := 0, 0
+	for _, row := range t.rows {
+		for _, m := range [...]int{colPH, colNominal, colMilliVolt, colTemperature, colIonic, colDilution, colPercent, colElapsed, colWavelength, colOrdinate} {
+			cell := t.at(row, m)
+			_, _, p := parse.Float(cell, '.')
+			_, _, c := parse.Float(cell, ',')
+			if p && !c {
+				points++
+			}
+			if c && !p {
+				commas++
+			}
+		}
+	}
+	if commas > points {
+		return ','
+	}
+	return '.'
+}
+
+// overfull refuses a table whose rows have more fields than heads: commas
+// that mark decimals also cut the fields.
+func (r *reader) overfull(t *table) error {
+	full := 0
+	first := tableRow{}
+	for _, row := range t.rows {
+		if over(row, len(t.heads)) {
+			if full == 0 {
+				first = row
+			}
+			full++
+		}
+	}
+	if 2*full <= len(t.rows) || full == 0 {
+		return nil
+	}
+	cells := make([]string, len(first.cells))
+	for i, c := range first.cells {
+		cells[i] = parse.Clean(c)
+	}
+	return r.refuse(first.line, "decimal sign", parse.Show(strings.Join(cells, string(rune(t.d.delim)))),
+		fmt.Sprintf("%d fields as there are heads", len(t.heads)), "a comma may both mark decimals and separate fields; export with a semicolon, a tab or a decimal point")
+}
+
+// over tells whether a row has more filled fields than there are heads.
+func over(row tableRow, heads int) bool {
+	return len(row.cells) > heads && slices.ContainsFunc(row.cells[heads:], func(c []byte) bool { return len(c) > 0 })
+}
+
+// tableFacts reads the header lines above the heads.
+func (r *reader) tableFacts(t *table) facts {
+	f := noFacts()
+	for _, e := range r.entries(t.d, 0, t.header) {
+		if !e.marker {
+			r.learn(&f, t.d.point, e.line, e.key, e.value)
+		}
+	}
+	r.settle(&f)
+	return f
+}
+
+// cutTable refuses a table whose last row lacks its end.
+func (r *reader) cutTable(t *table) error {
+	if !r.src.open || len(t.rows) < 2 {
+		return nil
+	}
+	last := t.rows[len(t.rows)-1]
+	if last.line != len(r.src.spans) {
+		return nil
+	}
+	prev := t.rows[len(t.rows)-2]
+	if len(last.cells) < len(prev.cells) {
+		return r.cutShort(last.line-1, len(prev.cells))
+	}
+	c := len(last.cells) - 1
+	_, k := t.d.number(last.cells[c])
+	_, kp := t.d.number(prev.cells[min(c, len(prev.cells)-1)])
+	if k >= 0 && kp > k {
+		return r.cutShort(last.line-1, len(prev.cells))
+	}
+	r.remark(last.line, "the file does not end with a line end")
+	return nil
+}
