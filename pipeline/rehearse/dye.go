@@ -104,7 +104,7 @@ func Dyes() map[string]Dye {
 		twoForm("BCP", "bromocresol purple", "MES", 6.30, -0.008, -0.011, acid(432, 17800), base(588.5, 39500)),
 		twoForm("PR", "phenol red", "HEPES", 7.80, -0.012, -0.014, acid(433, 19500), base(558.5, 37000)),
 		twoForm("CR", "cresol red", "TRIS", 8.20, -0.013, -0.028, acid(434, 18800), base(573.0, 38500)),
-		twoForm("TB", "thymol blue", "TRIS-glycinate", 8.90, -0.013, -0.026, acid(436, 16500), base(596.5, 36000)),
+		twoForm("TB", "thymol blue", "TRIS-glycinate", 8.90, -0.013, -0.026, acid(436, 18000), base(596.5, 40500)),
 		twoForm("BCG", "bromocresol green", "acetate-formate", 4.66, -0.003, 0.0002, acid(444, 17500), base(616.5, 38000)),
 		nitrophenol(),
 	}
@@ -112,10 +112,6 @@ func Dyes() map[string]Dye {
 	for _, d := range list {
 		out[d.Name] = d
 	}
-	// The thymol blue ladder ends where the highest buffer still supports the reading.
-	tb := out["TB"]
-	tb.Ladder = EvenLadder(tb.PKa, -2, 1.6, 12)
-	out["TB"] = tb
 	return out
 }
 

@@ -7,85 +7,111 @@ import (
 	"time"
 )
 
-// An export is one file an instrument writes.
-type export struct {
-	role  string // "scan", "blank", "ph"
-	rung  string
-	path  string
-	bytes []byte
-	at    time.Time
+// A File is one file an instrument writes.
+type File struct {
+	Role  string // "scan", "blank", "ph"
+	Rung  string // of a scan file that holds one rung
+	Path  string // relative to the instrument's folder
+	Bytes []byte
+	At    time.Time // when it is complete
+}
+
+// A Style is how an instrument writes.
+type Style struct {
+	JCAMP      bool     // JCAMP-DX instead of delimited text
+	Encoding   Encoding // of JCAMP-DX tables
+	Linked     bool     // all scans of a set in one compound file
+	Locale     Locale   // of delimited text
+	Percent    bool     // delimited text: percent transmittance
+	Descending bool     // delimited text: from long to short wavelengths
+	Zone       *time.Location
 }
 
 // path is the name of a file of a set: the stem, then what it holds.
 func (s *Set) path(what, ext string) string { return s.Stem + "_" + what + ext }
 
-// exportsOf renders a set as the files of its instrument. U1 writes delimited
-// text, one file a scan; U2 writes JCAMP-DX, one file a scan for samples and
-// one compound file for references. The pH table is text on both.
-func (s *Story) exportsOf(set *Set) []export {
-	var out []export
-	if set.Instrument == instTwo && set.Reference {
-		out = append(out, s.compound(set))
+// Files renders a set: its blank, its scans and its pH table, in order of
+// time. The pH table is delimited text in every style.
+func Files(set *Set, st Style) []File {
+	if st.Zone == nil {
+		st.Zone = time.UTC
+	}
+	var out []File
+	if st.Linked {
+		out = append(out, compoundFile(set, st))
 	} else {
-		out = s.single(set)
+		out = singleFiles(set, st)
 	}
-	last := out[len(out)-1].at
-	if end := set.End(); end.After(last) {
-		last = end
+	last := set.End()
+	if n := len(out); n > 0 && out[n-1].At.After(last) {
+		last = out[n-1].At
 	}
-	return append(out, export{
-		role: "ph", path: set.path("ph", ".csv"), bytes: PHTable(set, s.zone, Locale{}), at: last.Add(25 * time.Second),
-	})
+	return append(out, File{Role: "ph", Path: set.path("ph", ".csv"), Bytes: PHTable(set, st.Zone, st.Locale), At: last.Add(25 * time.Second)})
 }
 
-// single writes a file for every scan.
-func (s *Story) single(set *Set) []export {
-	var out []export
-	render := func(what string, sc Scan) []byte {
-		title := set.Lot + " " + what
-		if set.Instrument == instTwo {
-			return ScanJCAMP(title, set.Instrument, sc, s.zone, Differ)
-		}
-		return ScanCSV(title, set.Instrument, sc, s.zone, Locale{})
+// render writes one scan by itself.
+func render(set *Set, what string, sc Scan, st Style) []byte {
+	title := what
+	if set.Lot != "" {
+		title = set.Lot + " " + what
 	}
+	if st.JCAMP {
+		return ScanJCAMP(title, set.Instrument, sc, st.Zone, st.Encoding)
+	}
+	return scanText(title, set.Instrument, sc, st)
+}
+
+// singleFiles writes a file for every scan.
+func singleFiles(set *Set, st Style) []File {
+	var out []File
 	ext := ".csv"
-	if set.Instrument == instTwo {
+	if st.JCAMP {
 		ext = ".jdx"
 	}
 	if !set.NoBlank {
-		out = append(out, export{role: "blank", path: set.path("blank", ext), bytes: render("blank", set.Blank), at: set.Blank.Measured.Add(6 * time.Second)})
+		out = append(out, File{Role: "blank", Path: set.path("blank", ext), Bytes: render(set, "blank", set.Blank, st), At: set.Blank.Measured.Add(6 * time.Second)})
 	}
 	for _, r := range set.Rungs {
 		if r.NoScan {
 			continue
 		}
 		what := "s" + r.Key
-		out = append(out, export{role: "scan", rung: r.Key, path: set.path(what, ext), bytes: render(what, r.Scan), at: r.Scan.Measured.Add(6 * time.Second)})
+		out = append(out, File{Role: "scan", Rung: r.Key, Path: set.path(what, ext), Bytes: render(set, what, r.Scan, st), At: r.Scan.Measured.Add(6 * time.Second)})
 	}
 	return out
 }
 
-// compound writes all scans of a set into one file when the last is there.
-func (s *Story) compound(set *Set) export {
-	enc := AFFN
-	if set.Slot == "open" {
-		enc = Differ
-	}
+// compoundFile writes all scans of a set into one file when the last is there.
+func compoundFile(set *Set, st Style) File {
 	var blocks [][]byte
 	if !set.NoBlank {
-		blocks = append(blocks, ScanJCAMP("blank", set.Instrument, set.Blank, s.zone, enc))
+		blocks = append(blocks, ScanJCAMP("blank", set.Instrument, set.Blank, st.Zone, st.Encoding))
 	}
 	at := set.Blank.Measured
 	for _, r := range set.Rungs {
 		if r.NoScan {
 			continue
 		}
-		blocks = append(blocks, ScanJCAMP("s"+r.Key, set.Instrument, r.Scan, s.zone, enc))
+		blocks = append(blocks, ScanJCAMP("s"+r.Key, set.Instrument, r.Scan, st.Zone, st.Encoding))
 		if r.Scan.Measured.After(at) {
 			at = r.Scan.Measured
 		}
 	}
-	return export{role: "scan", path: set.Stem + ".jdx", bytes: LinkJCAMP(set.Name, blocks), at: at.Add(9 * time.Second)}
+	return File{Role: "scan", Path: set.Stem + ".jdx", Bytes: LinkJCAMP(set.Name, blocks), At: at.Add(9 * time.Second)}
+}
+
+// exportsOf renders a set of the story as its instrument does. U1 writes
+// delimited text, one file a scan; U2 writes JCAMP-DX, one file a scan for
+// samples and one compound file for references.
+func (s *Story) exportsOf(set *Set) []File {
+	st := Style{Zone: s.zone}
+	if set.Instrument == instTwo {
+		st.JCAMP, st.Encoding, st.Linked = true, Differ, set.Reference
+		if set.Slot == "close" {
+			st.Encoding = AFFN
+		}
+	}
+	return Files(set, st)
 }
 
 // typo spoils the lot in a file name as a hand at a keyboard would: a letter

@@ -3,6 +3,7 @@ package rehearse
 import (
 	"bytes"
 	"fmt"
+	"math"
 	"strconv"
 	"strings"
 	"time"
@@ -41,6 +42,12 @@ func (l Locale) number(dst []byte, v float64, decimals int) []byte {
 // ScanCSV writes one scan as delimited text: a block of keys and values, an
 // empty line, column names, one row per wavelength.
 func ScanCSV(sample, instrument string, sc Scan, zone *time.Location, l Locale) []byte {
+	return scanText(sample, instrument, sc, Style{Zone: zone, Locale: l})
+}
+
+// scanText is ScanCSV in a style of writing.
+func scanText(sample, instrument string, sc Scan, st Style) []byte {
+	l, zone := st.Locale, st.Zone
 	d := l.delimiter()
 	b := make([]byte, 0, 320+18*len(sc.WavelengthNM))
 	line := func(key, value string) {
@@ -56,14 +63,25 @@ func ScanCSV(sample, instrument string, sc Scan, zone *time.Location, l Locale) 
 	line("Path length (mm)", string(l.number(nil, sc.PathMM, 1)))
 	line("Cell temperature (C)", string(l.number(nil, sc.TemperatureC, 1)))
 	line("Bandwidth (nm)", string(l.number(nil, sc.BandwidthNM, 1)))
-	line("Ordinate", "absorbance")
+	ordinate, column := "absorbance", "Absorbance"
+	if st.Percent {
+		ordinate, column = "percent transmittance", "Transmittance (%)"
+	}
+	line("Ordinate", ordinate)
 	line("Points", strconv.Itoa(len(sc.WavelengthNM)))
 	b = append(b, "\r\n"...)
-	b = append(b, "Wavelength (nm)"+d+"Absorbance\r\n"...)
-	for i, nm := range sc.WavelengthNM {
-		b = l.number(b, nm, 1)
+	b = append(b, "Wavelength (nm)"+d+column+"\r\n"...)
+	for i := range sc.WavelengthNM {
+		if st.Descending {
+			i = len(sc.WavelengthNM) - 1 - i
+		}
+		v := sc.Absorbance[i]
+		if st.Percent {
+			v = 100 * math.Pow(10, -v)
+		}
+		b = l.number(b, sc.WavelengthNM[i], 1)
 		b = append(b, d...)
-		b = l.number(b, sc.Absorbance[i], sc.Decimals)
+		b = l.number(b, v, sc.Decimals)
 		b = append(b, "\r\n"...)
 	}
 	return b

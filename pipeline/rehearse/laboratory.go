@@ -42,6 +42,8 @@ func (s *Story) SettingsWith(base string, to Wires) []byte {
 		"u_temperature", 0.1, "u_activity_rel", 0.06, "u_stray", 0.0003, "u_impurity", 0.002)
 	w.text("\n# Electrodes are calibrated every Monday.")
 	w.list("check", "check", "calibration.age", "note_when", []float64{192}, "hold_when", []float64{240})
+	w.text("\n# The thymol blue ladder ends 0.9 above the highest buffer; a carbonate-hydroxide solution has shown the line to hold there.")
+	w.list("check", "check", "ph.range", "compound", sampleCompounds()["TB"], "note_when", []float64{1.0}, "hold_when", []float64{1.5})
 	w.table("charts", "false_alarm_nights", 365.0, "impact_limit", 0.02, "baseline_nights", 14, "young_nights", 8)
 	people(w, to)
 	outside(w, to)

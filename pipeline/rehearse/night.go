@@ -128,28 +128,28 @@ func (m *nightMaker) deliver(set *Set, t trouble) {
 
 // ordinary writes one undisturbed file. The changer's compound files come in
 // two ways: some are renamed into place, others grow before our eyes.
-func (m *nightMaker) ordinary(set *Set, f export) {
-	compound := set.Instrument == instTwo && set.Reference && f.role == "scan"
+func (m *nightMaker) ordinary(set *Set, f File) {
+	compound := set.Instrument == instTwo && set.Reference && f.Role == "scan"
 	switch {
 	case compound && set.Slot == "close":
-		m.write(f.at.Add(-8*time.Second), set.Instrument, f.path+".part", f.bytes, "written under another name")
-		m.add(Deposit{At: f.at, Act: Rename, Folder: set.Instrument, Path: f.path, From: f.path + ".part", Note: "renamed into place"})
+		m.write(f.At.Add(-8*time.Second), set.Instrument, f.Path+".part", f.Bytes, "written under another name")
+		m.add(Deposit{At: f.At, Act: Rename, Folder: set.Instrument, Path: f.Path, From: f.Path + ".part", Note: "renamed into place"})
 	case compound && m.night%2 == 1:
-		m.add(Deposit{At: f.at.Add(-40 * time.Second), Act: WritePart, Folder: set.Instrument, Path: f.path, Bytes: f.bytes[:len(f.bytes)/2], Note: "slow writer"})
-		m.write(f.at, set.Instrument, f.path, f.bytes, "slow writer, finished")
+		m.add(Deposit{At: f.At.Add(-40 * time.Second), Act: WritePart, Folder: set.Instrument, Path: f.Path, Bytes: f.Bytes[:len(f.Bytes)/2], Note: "slow writer"})
+		m.write(f.At, set.Instrument, f.Path, f.Bytes, "slow writer, finished")
 	default:
-		m.write(f.at, set.Instrument, f.path, f.bytes, f.role)
+		m.write(f.At, set.Instrument, f.Path, f.Bytes, f.Role)
 	}
 }
 
 // struckFile is the index of the file a trouble befalls, -1 for none.
-func struckFile(files []export, t trouble) int {
+func struckFile(files []File, t trouble) int {
 	switch t.key {
 	case "name.phlate":
 		return len(files) - 1
 	case "file.copy", "file.reexport", "name.typo", "file.comma", "file.cut":
 		for i, f := range files {
-			if f.role == "scan" && (f.rung == "" || f.rung == rungKey(t.rung+1)) {
+			if f.Role == "scan" && (f.Rung == "" || f.Rung == rungKey(t.rung+1)) {
 				return i
 			}
 		}
@@ -158,43 +158,43 @@ func struckFile(files []export, t trouble) int {
 }
 
 // struck writes one file with its trouble.
-func (m *nightMaker) struck(set *Set, f export, t trouble) {
+func (m *nightMaker) struck(set *Set, f File, t trouble) {
 	inst, morning := set.Instrument, m.story.at(m.night, 7, 20+t.rung)
 	switch t.key {
 	case "name.phlate":
-		f.at = delayed(f.at, t.size)
+		f.At = delayed(f.At, t.size)
 		m.ordinary(set, f)
 	case "file.copy":
 		m.ordinary(set, f)
-		m.write(f.at.Add(11*time.Minute), inst, copyName(f.path), f.bytes, "exact copy")
+		m.write(f.At.Add(11*time.Minute), inst, copyName(f.Path), f.Bytes, "exact copy")
 	case "file.reexport":
 		m.ordinary(set, f)
-		m.write(morning, inst, f.path, m.stronger(set, f, t), "exported again with other numbers")
+		m.write(morning, inst, f.Path, m.stronger(set, f, t), "exported again with other numbers")
 	case "name.typo":
-		wrong := typo(f.path, t.coin)
-		m.write(f.at, inst, wrong, f.bytes, "mistyped name")
+		wrong := typo(f.Path, t.coin)
+		m.write(f.At, inst, wrong, f.Bytes, "mistyped name")
 		if t.rung%2 == 0 {
-			m.sign(morning, Signature{Verb: "adopt", Object: set.Key(), File: inst + "/" + wrong, Rung: f.rung, As: analyst, Because: "file name mistyped at the instrument"})
+			m.sign(morning, Signature{Verb: "adopt", Object: set.Key(), File: inst + "/" + wrong, Rung: f.Rung, As: analyst, Because: "file name mistyped at the instrument"})
 		}
 	case "file.comma":
 		if inst == instTwo {
 			m.ordinary(set, f) // this format knows no locale
 			return
 		}
-		m.write(f.at, inst, f.path, commas(f.bytes, t.coin), "decimal comma")
+		m.write(f.At, inst, f.Path, commas(f.Bytes, t.coin), "decimal comma")
 		if t.coin {
-			m.write(morning, inst, f.path, f.bytes, "exported again with decimal points")
+			m.write(morning, inst, f.Path, f.Bytes, "exported again with decimal points")
 		}
 	case "file.cut":
-		m.write(f.at, inst, f.path, cut(f.bytes, t.size), "cut short")
+		m.write(f.At, inst, f.Path, cut(f.Bytes, t.size), "cut short")
 		if t.coin {
-			m.write(morning, inst, f.path, f.bytes, "exported again, whole")
+			m.write(morning, inst, f.Path, f.Bytes, "exported again, whole")
 		}
 	}
 }
 
 // stronger renders a file again with one spectrum times 1.02.
-func (m *nightMaker) stronger(set *Set, f export, t trouble) []byte {
+func (m *nightMaker) stronger(set *Set, f File, t trouble) []byte {
 	again := *set
 	again.Rungs = slices.Clone(set.Rungs)
 	r := &again.Rungs[t.rung]
@@ -204,11 +204,11 @@ func (m *nightMaker) stronger(set *Set, f export, t trouble) []byte {
 	}
 	r.Scan.Absorbance = y
 	for _, g := range m.story.exportsOf(&again) {
-		if g.path == f.path {
-			return g.bytes
+		if g.Path == f.Path {
+			return g.Bytes
 		}
 	}
-	return f.bytes
+	return f.Bytes
 }
 
 // missing lets the rung be measured in the morning, or never.
@@ -222,8 +222,8 @@ func (m *nightMaker) missing(set *Set, t trouble) {
 	r.NoScan = false
 	r.Scan.Measured = m.story.at(m.night, 7, 40+t.rung)
 	for _, f := range m.story.exportsOf(&whole) {
-		if f.role == "scan" && f.rung == r.Key {
-			m.write(r.Scan.Measured.Add(6*time.Second), set.Instrument, f.path, f.bytes, "measured in the morning")
+		if f.Role == "scan" && f.Rung == r.Key {
+			m.write(r.Scan.Measured.Add(6*time.Second), set.Instrument, f.Path, f.Bytes, "measured in the morning")
 		}
 	}
 }

@@ -84,7 +84,7 @@ func (m *nightMaker) tellTrouble(b Booking, set *Set, t trouble) {
 	truth := Truth{Key: t.key, Kind: KindSet, Set: b.Key(), Size: t.size}
 	file := ""
 	if i := struckFile(m.story.exportsOf(set), t); i >= 0 {
-		file = b.Instrument + "/" + m.story.exportsOf(set)[i].path
+		file = b.Instrument + "/" + m.story.exportsOf(set)[i].Path
 	}
 	switch t.key {
 	case "scan.bubble", "name.blankwrong":

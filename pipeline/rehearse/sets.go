@@ -46,6 +46,7 @@ func (s *Story) lotOf(b Booking, c *Conditions) {
 	c.BandShift = 0.1 * rng.NormFloat64()
 	c.Amount = 0.92 + 0.05*rng.Float64()
 	if b.Lot == impureLot {
+		c.Amount = 0.97
 		c.SecondDye, c.SecondDPKa, c.SecondNM = 0.04, 0.8, -10
 	}
 }
