@@ -107,6 +107,7 @@ func (r *reader) unnamedQuantity(a *reading, f facts, by map[string][]trace, mod
 		free[i].quantity = mode
 	}
 	by[mode] = free
+	by[qUnknown] = slices.DeleteFunc(by[qUnknown], func(t trace) bool { return slices.ContainsFunc(free, func(o trace) bool { return o.col == t.col }) })
 	r.skipped(a, by, mode)
 	return free, nil
 }

@@ -62,6 +62,23 @@ func (r *reader) long(t *table) (*parse.Content, error) {
 	return c, nil
 }
 
+// grouped tells whether the column of names groups the rows into spectra, and
+// is not itself a measured column that happens to be called sample.
+func (t *table) grouped() bool {
+	key := labelColumn(t)
+	if key == colNone {
+		key = colPH
+	}
+	names := map[string]bool{}
+	for _, row := range t.rows {
+		names[string(t.at(row, key))] = true
+		if len(names)*leastPoints > len(t.rows) {
+			return false
+		}
+	}
+	return len(names) > 0
+}
+
 // group is one scan of a long form.
 type group struct {
 	line  int

@@ -148,7 +148,7 @@ func (r *reader) dispatch() (*parse.Content, error) {
 		r.say(t.header+1, "the heads of the columns are those of a file of kind %s", kind)
 	}
 	switch kind {
-	case "scan", "long":
+	case "scan", "long", "columns", "pairs", "rows":
 		return r.scans()
 	case "calibration":
 		return r.calibration(t)

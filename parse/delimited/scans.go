@@ -12,7 +12,7 @@ import (
 // scans reads a file of spectra.
 func (r *reader) scans() (*parse.Content, error) {
 	if r.lay.Shape == "" || r.lay.Shape == "long" {
-		if t := r.table("long"); t != nil && t.class == "long" {
+		if t := r.table("long"); t != nil && (r.lay.Shape == "long" || t.grouped()) {
 			return r.long(t)
 		} else if r.lay.Shape == "long" {
 			return nil, r.refuse(0, "", r.opening(), "heads naming wavelength, absorbance and sample", "correct the layout")
@@ -120,17 +120,27 @@ func (r *reader) ending(from int, scans []parse.Scan) bool {
 // it tell.
 func (r *reader) betterReason(err error) error {
 	const look = 60
+	var because error
 	for i := range min(look, len(r.src.spans)) {
 		line := r.src.line(i)
+		if !wordy(line) {
+			continue
+		}
 		for _, delim := range [...]byte{'\t', ';', ',', ' '} {
 			cells := dialect{delim: delim, point: '.'}.headCells(line)
-			if len(cells) < 2 || slices.ContainsFunc(cells, isAxisWord) {
+			if slices.ContainsFunc(cells, isAxisWord) {
+				return err
+			}
+			if len(cells) < 2 || because != nil {
 				continue
 			}
 			if q := quantity(cells[0]); q == qTime && headerKey(cells[0]) == 0 || q == qTime && len(cells) > 2 {
-				return r.refuse(i+1, "", parse.Show(line), "wavelengths in the first column", "this is a time trace, not a spectrum")
+				because = r.refuse(i+1, "", parse.Show(line), "wavelengths in the first column", "this is a time trace, not a spectrum")
 			}
 		}
+	}
+	if because != nil {
+		return because
 	}
 	return err
 }

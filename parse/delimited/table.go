@@ -220,39 +220,49 @@ func (t *table) field(meaning int) string {
 	return ""
 }
 
-// table finds the line of heads of a labelled table. want is the kind the
-// file must be, or "" for any. Nil where no line qualifies.
+// table finds the line of heads of a labelled table: among the first lines
+// the one with the most columns that are understood, the earlier of equals.
+// want is the kind the file must be, or "" for any. Nil where no line
+// qualifies.
 func (r *reader) table(want string) *table {
-	const search = 120
+	const search, longestHeads = 120, 8192
 	var best *table
 	for i := range min(search, len(r.src.spans)) {
 		line := r.src.line(i)
-		if r.lay.HeaderLine > 0 && i != r.lay.HeaderLine-1 || blank(line) || len(line) > 8192 {
+		if r.lay.HeaderLine > 0 && i != r.lay.HeaderLine-1 || !wordy(line) || len(line) > longestHeads {
 			continue
 		}
 		for _, delim := range [...]byte{'\t', ';', ',', '|', ' '} {
-			if d := delimiterByte(r.lay.Delimiter); d != 0 && d != delim || delim == ' ' && (best != nil || bytes.ContainsAny(line, "\t;,|")) {
+			if d := delimiterByte(r.lay.Delimiter); d != 0 && d != delim || bytes.IndexByte(line, delim) < 0 {
+				continue
+			}
+			if delim == ' ' && bytes.ContainsAny(line, "\t;,|") {
 				continue
 			}
 			t := r.headed(i, delim)
-			if t == nil || want != "" && !t.serves(want) {
+			if t == nil || !t.serves(want) {
 				continue
 			}
-			if t.class == "" || want != "" {
-				t.class = classOf(want, t.class)
-			}
+			t.class = classOf(want, t.class)
 			if best == nil || t.known() > best.known() {
 				best = t
 			}
-		}
-		if best != nil {
-			break
 		}
 	}
 	if best != nil {
 		r.readRows(best)
 	}
 	return best
+}
+
+// wordy tells whether a line begins like one of heads and not like one of data.
+func wordy(line []byte) bool {
+	line = bytes.TrimLeft(line, " \t\"")
+	if len(line) == 0 {
+		return false
+	}
+	c := line[0]
+	return c != '-' && c != '+' && c != '.' && c-'0' > 9
 }
 
 func classOf(want, found string) string {
@@ -369,6 +379,8 @@ func (t *table) classify() string {
 // serves tells whether a table can be read as the kind wanted.
 func (t *table) serves(want string) bool {
 	switch want {
+	case "":
+		return t.class != ""
 	case "ph", "ph-table", "ph-series":
 		return t.has(colPH) || t.has(colMilliVolt)
 	case "calibration":
