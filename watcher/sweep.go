@@ -13,7 +13,6 @@ import (
 	"strings"
 	"time"
 
-	"golang.org/x/text/cases"
 	"golang.org/x/text/unicode/norm"
 )
 
@@ -307,7 +306,7 @@ func fold(p string) string {
 	if ascii {
 		return strings.ToLower(p)
 	}
-	return norm.NFC.String(cases.Fold().String(norm.NFC.String(p)))
+	return norm.NFC.String(strings.ToLower(strings.ToUpper(norm.NFC.String(p))))
 }
 
 // unreadable reports whether a path lies below a directory that could not be read.

@@ -8,17 +8,19 @@ import (
 	"strings"
 )
 
-// roleWords are words of a role group that need no declaration.
-var roleWords = map[string]string{
-	"scan": RoleScan, "spectrum": RoleScan,
-	"blank": RoleBlank, "blk": RoleBlank, "bl": RoleBlank, "buffer": RoleBlank,
-	"ph": RolePH, "pht": RolePH, "phlog": RolePH, "phtable": RolePH,
-	"calibration": RoleCalibration, "cal": RoleCalibration,
-	"sheet": RoleSheet, "map": RoleSheet, "sequence": RoleSheet, "seq": RoleSheet, "joblist": RoleSheet, "jobs": RoleSheet,
-	"events": RoleEvents, "log": RoleEvents,
-	"plan": RolePlan,
-	"end":  RoleEnd, "done": RoleEnd, "ready": RoleEnd,
-	"ignore": RoleIgnore,
+// wordsOf lists words of a role group that need no declaration, role by role.
+func wordsOf() map[string][]string {
+	return map[string][]string{
+		RoleScan:        {"scan", "spectrum"},
+		RoleBlank:       {"blank", "blk", "bl", "buffer"},
+		RolePH:          {"ph", "pht", "phlog", "phtable"},
+		RoleCalibration: {"calibration", "cal"},
+		RoleSheet:       {"sheet", "map", "sequence", "seq", "joblist", "jobs"},
+		RoleEvents:      {"events", "log"},
+		RolePlan:        {"plan"},
+		RoleEnd:         {"end", "done", "ready"},
+		RoleIgnore:      {"ignore"},
+	}
 }
 
 // Roles lists the roles of this program.
@@ -29,8 +31,13 @@ func Roles() []string {
 // RoleOf gives the role of a word that needs no declaration ("blk" is a
 // blank), and whether there is one. Case does not matter.
 func RoleOf(word string) (string, bool) {
-	r, ok := roleWords[strings.ToLower(word)]
-	return r, ok
+	word = strings.ToLower(word)
+	for role, words := range wordsOf() {
+		if slices.Contains(words, word) {
+			return role, true
+		}
+	}
+	return "", false
 }
 
 // Compile makes rules ready for use. All faults of all rules are returned at
@@ -82,9 +89,11 @@ func (k *ruleCheck) compile() compiled {
 	c.set = k.template("set", r.Set, "set", groups)
 	c.series = k.template("series", r.Series, "series", groups)
 	c.run = k.template("run", r.Run, "run", groups)
-	c.roles = make(map[string]string, len(roleWords)+len(r.Roles))
-	for w, role := range roleWords {
-		c.roles[w] = role
+	c.roles = map[string]string{}
+	for role, words := range wordsOf() {
+		for _, w := range words {
+			c.roles[w] = role
+		}
 	}
 	for w, role := range r.Roles {
 		k.word("roles."+w, role, Roles())

@@ -10,7 +10,6 @@ import (
 	"strings"
 	"time"
 
-	"golang.org/x/text/cases"
 	"golang.org/x/text/unicode/norm"
 )
 
@@ -93,7 +92,7 @@ func (r *Rules) Match(folder, path string) (Match, error) {
 // MatchColumn sorts one trace of a file whose rule has a column pattern: m is
 // what Match said of the file, label the trace's label. Groups of the file's
 // name stay in force where the label has none of that name. The error is a
-// *NoRuleError with Path "path-less" label when the label fits not, or a
+// *NoRuleError with the label as its Path when the label does not fit, or a
 // *ValueError.
 func (r *Rules) MatchColumn(m Match, label string) (Match, error) {
 	for i := range r.rules {
@@ -148,7 +147,10 @@ func Normal(path string) string {
 
 // Fold is Normal without regard to case: two paths that fold alike name the
 // same file on a share that does not tell capitals from small letters.
-func Fold(path string) string { return cases.Fold().String(Normal(path)) }
+func Fold(path string) string {
+	// Upper first, so that letters with two small forms meet; rune by rune, as file systems do it.
+	return norm.NFC.String(strings.ToLower(strings.ToUpper(Normal(path))))
+}
 
 // RungKey is a rung, position or row label as it is compared: trimmed, folded,
 // without a leading "r" or "rung" before digits, and without leading zeros,
@@ -249,7 +251,7 @@ func (c *compiled) readTime(g map[string]string, m *Match) *ValueError {
 		m.Date = t.Format(time.DateOnly)
 	}
 	if s := g["stamp"]; s != "" {
-		t, ok := parseTime(s, stampLayouts)
+		t, ok := parseTime(s, stampLayouts())
 		if !ok {
 			return &ValueError{Group: "stamp", Found: s, Expected: "a date with time of day such as 20260311T214533 or 2026-03-11_21-45-33"}
 		}
@@ -262,11 +264,13 @@ func (c *compiled) readTime(g map[string]string, m *Match) *ValueError {
 }
 
 // stampLayouts are the ways a file name writes date and time together.
-var stampLayouts = []string{
-	"20060102T150405", "20060102-150405", "20060102_150405", "20060102150405", "20060102 150405",
-	"2006-01-02T15:04:05", "2006-01-02T15-04-05", "2006-01-02_15-04-05", "2006-01-02 15-04-05", "2006-01-02T150405",
-	"2006-01-02_150405", "2006-01-02 15.04.05", "20060102T1504", "20060102-1504", "20060102_1504",
-	"060102-150405", "060102_150405", "060102T150405",
+func stampLayouts() []string {
+	return []string{
+		"20060102T150405", "20060102-150405", "20060102_150405", "20060102150405", "20060102 150405",
+		"2006-01-02T15:04:05", "2006-01-02T15-04-05", "2006-01-02_15-04-05", "2006-01-02 15-04-05", "2006-01-02T150405",
+		"2006-01-02_150405", "2006-01-02 15.04.05", "20060102T1504", "20060102-1504", "20060102_1504",
+		"060102-150405", "060102_150405", "060102T150405",
+	}
 }
 
 func parseTime(s string, layouts []string) (time.Time, bool) {
