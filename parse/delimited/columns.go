@@ -75,7 +75,7 @@ func (r *reader) traces(a *reading, f facts) ([]trace, error) {
 // unnamedQuantity settles traces whose heads state no quantity: the header or
 // the layout must.
 func (r *reader) unnamedQuantity(a *reading, f facts, by map[string][]trace, mode string) ([]trace, error) {
-	free := by[qUnknown]
+	free := slices.Clone(by[qUnknown])
 	if len(free) == 0 && mode != qUnknown && mode != qOther && r.lay.Ordinate != "" {
 		free = append(by[qOther], by[qTime]...)
 	}

@@ -65,7 +65,7 @@ func (r *reader) findHeads(a *reading) {
 		if nearest < 0 && len(cells) == a.b.cols && a.b.cols > 1 {
 			nearest = i
 		}
-		if !r.axisLine(a, cells) {
+		if !r.axisLine(a, i, cells) {
 			continue
 		}
 		a.header, a.heads, a.named = i, cells, true
@@ -89,7 +89,7 @@ func (r *reader) findHeads(a *reading) {
 func isAxis(cell string) bool { return quantity(cell) == qWavelength }
 
 // axisLine tells whether cells are heads of which one names the wavelength.
-func (r *reader) axisLine(a *reading, cells []string) bool {
+func (r *reader) axisLine(a *reading, i int, cells []string) bool {
 	k := slices.IndexFunc(cells, isAxis)
 	if k < 0 || k >= a.b.cols {
 		return false
@@ -101,7 +101,7 @@ func (r *reader) axisLine(a *reading, cells []string) bool {
 		return true
 	}
 	if _, kind := a.d.number([]byte(cells[1])); kind >= parse.Exponential {
-		return headerKey(cells[0]) == 0 && mere(cells[0])
+		return i == a.b.first-1 && mere(cells[0]) // the name of the trace is a number
 	}
 	return true
 }

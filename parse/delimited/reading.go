@@ -146,8 +146,9 @@ func (r *reader) assessAll(grouped bool) (good, bad []*reading) {
 	return good, bad
 }
 
-// distinct drops readings that give the same numbers as an earlier one, and
-// those a header speaks against: heads fit one of two readings in number.
+// distinct drops readings that give the same numbers as an earlier one. Where
+// there are as many heads as fields every field is a column, and the comma
+// marks no decimals.
 func (r *reader) distinct(good []*reading) []*reading {
 	var out []*reading
 	for _, a := range good {
@@ -159,9 +160,9 @@ func (r *reader) distinct(good []*reading) []*reading {
 	if len(out) < 2 {
 		return out
 	}
-	fits := slices.DeleteFunc(slices.Clone(out), func(a *reading) bool { return !a.named || len(a.heads) != a.b.cols })
+	fits := slices.DeleteFunc(slices.Clone(out), func(a *reading) bool { return a.d.joined || !a.named || len(a.heads) != a.b.cols })
 	if len(fits) == 1 {
-		r.remark(fits[0].header+1, "of %d readings only %s agrees with the number of heads", len(out), fits[0].d)
+		r.say(fits[0].header+1, "of %d readings only %s agrees with the number of heads", len(out), fits[0].d)
 		return fits
 	}
 	return out
