@@ -77,3 +77,12 @@ func (s *Store) LastArrival(ctx context.Context, q Querier, root string, until t
 	}
 	return when(t), nil
 }
+
+// RecordOf gives the calculation record of a result.
+func (s *Store) RecordOf(ctx context.Context, q Querier, resultID int64) ([]byte, error) {
+	var raw []byte
+	if err := s.on(q).QueryRow(ctx, `SELECT record FROM pkvigil.result WHERE id = $1`, resultID).Scan(&raw); err != nil {
+		return nil, fmt.Errorf("calculation record of result %d: %w", resultID, safe(err))
+	}
+	return raw, nil
+}

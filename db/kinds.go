@@ -34,7 +34,8 @@ type RootState struct {
 	ClockOffset  time.Duration // share clock minus ours, as last estimated
 }
 
-// A Stamp is what is known of a file's newest revision.
+// A Stamp is what is known of a file's newest revision. ModTime is kept to the
+// microsecond: truncate before comparing.
 type Stamp struct {
 	FileID  int64
 	Size    int64
@@ -96,6 +97,10 @@ type Taken struct {
 
 	// Instruments tells which instruments an event concerns; nil: none named.
 	Instruments func(parse.Event) []string
+
+	// Twin is the earlier entry of the same batch with the same bytes, if that
+	// is what makes this file a twin; File.TwinOf is then filled in.
+	Twin *Taken
 
 	Stored Stored // filled by TakeFile and TakeBatch
 }
@@ -172,10 +177,11 @@ type Member struct {
 // An OpenSet is a set still gathering or waiting, with what it has so far.
 type OpenSet struct {
 	Set
-	Roles  map[string]int // active members by role
-	Rungs  []string       // distinct rungs of active scans, sorted
-	RungPH map[string]int // labels of pH readings of its active pH files, counted
-	Ended  bool           // an end marker or a complete format was seen
+	Roles     map[string]int // active members by role
+	Rungs     []string       // distinct rungs of active scans of role scan, sorted as text
+	Positions []string       // their distinct positions where they have one
+	RungPH    map[string]int // labels of the pH readings of its active tables, counted
+	Ended     bool           // an end marker is among its members
 }
 
 // A ScanRow is a stored scan.
