@@ -15,7 +15,7 @@ func (m *Model) Evaluate(h History) (Evaluation, error) {
 	ev := Evaluation{Night: h.Last, Hypotheses: l.hypotheses()}
 	ev.Threshold = m.rules.Threshold
 	if ev.Threshold == 0 {
-		ev.Threshold = Threshold(ev.Hypotheses, m.rules.FalseAlarmNights)
+		ev.Threshold = Threshold(ev.Hypotheses, m.tolerable())
 	}
 	l.standing(&ev)
 	var found []*ranked
