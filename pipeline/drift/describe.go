@@ -41,8 +41,13 @@ func (l *look) describe(r *ranked, found []*ranked) Explanation {
 	l.judge(&e, noneAt)
 	e.Touched = l.touched(top, others)
 	for _, i := range top.out.s.cells {
-		e.Cells = append(e.Cells, l.cells[i].c.Key)
+		c := l.cells[i].c
+		e.Cells = append(e.Cells, c.Key)
+		if c.Instrument != "" && !slices.Contains(e.Instruments, c.Instrument) {
+			e.Instruments = append(e.Instruments, c.Instrument)
+		}
 	}
+	e.Impact = l.impact(top)
 	e.Alike = l.alike(r)
 	e.Next = l.next(r)
 	e.Sentence = l.sentence(top, e)
@@ -148,6 +153,34 @@ func (l *look) addPrediction(out [][][]float64, c rankedCause, f float64) {
 			}
 		}
 	}
+}
+
+// impact is the upper 95 % bound of the largest change of a reference's pKa.
+func (l *look) impact(c rankedCause) float64 {
+	s := c.out.s
+	tr := l.m.traits[s.trait]
+	now, _ := latest(l.course(s, c.shape, c.onset))
+	worst := 0.0
+	for _, i := range s.cells {
+		cl := l.cells[i].c
+		j := slices.Index(cl.Characteristics, PKa)
+		if j < 0 {
+			continue
+		}
+		f := [2]float64{cl.cols[s.trait][j]}
+		if tr.Columns > 1 {
+			f[1] = cl.cols[s.trait][cl.k+j]
+		}
+		worst = math.Max(worst, upper(f, c.h.theta, c.h.cov, now))
+	}
+	return worst
+}
+
+// upper bounds |s f'theta| with 95 %.
+func upper(f, theta [2]float64, cov [3]float64, s float64) float64 {
+	mean := f[0]*theta[0] + f[1]*theta[1]
+	v := f[0]*f[0]*cov[0] + 2*f[0]*f[1]*cov[1] + f[1]*f[1]*cov[2]
+	return math.Abs(s) * (math.Abs(mean) + 1.645*math.Sqrt(math.Max(0, v)))
 }
 
 // classify sums the probability of the winner's class.

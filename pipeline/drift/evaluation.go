@@ -116,4 +116,6 @@ type Watched struct {
 	Share float64 `json:"share"`
 	// Inside: it would show, and it does not.
 	Inside bool `json:"inside"`
+	// Retired: cells that used the resource were observed tonight, and none of them uses it any more.
+	Retired bool `json:"retired"`
 }

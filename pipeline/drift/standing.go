@@ -106,6 +106,7 @@ func (l *look) watched(w Watch) Watched {
 			num += dot(wx, cl.obs[n-1].y)
 			den += dot(wx, x)
 		}
+		out.Retired = !out.Data && l.retired(s, tr.Role)
 		if den > 0 {
 			out.Expected, out.Share = math.Sqrt(den), num/den
 			out.Inside = out.Expected >= 2 && out.Share < 0.5 && num/math.Sqrt(den) < 2.5
@@ -122,4 +123,19 @@ func (l *look) resetting(s *scope, sh Shape) Shape {
 		return ShapeSawtooth
 	}
 	return sh
+}
+
+// retired reports whether cells that used a declared resource are observed in
+// the last night and none of them uses it any more.
+func (l *look) retired(s *scope, role string) bool {
+	seen := false
+	for _, i := range s.cells {
+		u, ok := l.uses[useKey{s.res, role, i}]
+		if !ok || u[l.nights-1] {
+			return false
+		}
+		n := len(l.cells[i].obs)
+		seen = seen || (n > 0 && l.cells[i].obs[n-1].night == l.nights-1)
+	}
+	return seen
 }
