@@ -127,14 +127,7 @@ func (c *core) fill(p *Problem, shared []Shared, inf *influence, out *Estimate) 
 			out.Components = append(out.Components, sh.component(k, out.Gain[k*m:(k+1)*m]))
 		}
 	}
-	for _, sh := range shared {
-		for k := 0; k < n; k++ {
-			ck := sh.coefficient(k, out.Gain[k*m:(k+1)*m])
-			for l := 0; l < n; l++ {
-				out.Cov[k*n+l] += ck * sh.coefficient(l, out.Gain[l*m:(l+1)*m]) * sh.U * sh.U
-			}
-		}
-	}
+	out.addShared(shared, n, m)
 	out.Eta, out.Kappa, out.Baseline = grow(out.Eta, m), grow(out.Kappa, m), grow(out.Baseline, m)
 	for i := 0; i < m; i++ {
 		out.Eta[i] = f.t[i] - c.ph[i]
@@ -146,6 +139,18 @@ func (c *core) fill(p *Problem, shared []Shared, inf *influence, out *Estimate) 
 		}
 	}
 	out.Objective = f.phi
+}
+
+// addShared adds every shared error to the covariance once, by its coefficients.
+func (e *Estimate) addShared(shared []Shared, n, m int) {
+	for _, sh := range shared {
+		for k := 0; k < n; k++ {
+			ck := sh.coefficient(k, e.Gain[k*m:(k+1)*m])
+			for l := 0; l < n; l++ {
+				e.Cov[k*n+l] += ck * sh.coefficient(l, e.Gain[l*m:(l+1)*m]) * sh.U * sh.U
+			}
+		}
+	}
 }
 
 // ownParts is the covariance of pKa k and l from reading, amount, noise, baseline.

@@ -195,6 +195,9 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	r.Condition = s.inf.cond
 	if opt.Bare {
 		r.Full.RMS = s.rms(p, opt, r, &r.Full, nil)
+		if p.NonNegative && !c.fixed {
+			s.constrain(p, shared, opt, r)
+		}
 		return
 	}
 	r.Residual = make([]float64, c.m*c.w)
@@ -204,6 +207,9 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	c.components(opt, r)
 	s.leaveOneOut(shared, opt, r)
 	s.doubt(opt, r)
+	if p.NonNegative && !c.fixed && r.Status == Converged {
+		s.constrain(p, shared, opt, r)
+	}
 }
 
 // own makes the own-weighted estimate from every distinct plain minimum, so
