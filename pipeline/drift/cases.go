@@ -135,8 +135,12 @@ func Update(open []Case, ev Evaluation, events []Event, decisions []Decision, ru
 	}
 	u.decide(decisions)
 	u.events(events)
-	for _, e := range ev.Explanations {
-		u.explain(e)
+	for _, harmless := range []bool{false, true} { // what harms results leads its case
+		for _, e := range ev.Explanations {
+			if lead, ok := e.Lead(); ok && isHarmless(lead.Cause) == harmless {
+				u.explain(e, lead)
+			}
+		}
 	}
 	u.watch()
 	u.escalate()
@@ -149,6 +153,7 @@ type updating struct {
 	cases []Case
 	said  []Transition
 	fresh []int // opened tonight
+	taken []int // explained tonight
 }
 
 func (u *updating) say(i int, c Change, format string, args ...any) {
@@ -199,24 +204,18 @@ func (u *updating) events(events []Event) {
 }
 
 // explain joins an explanation to its case or opens one.
-func (u *updating) explain(e Explanation) {
-	lead, ok := e.Lead()
-	if !ok {
-		return
-	}
+func (u *updating) explain(e Explanation, lead Candidate) {
 	i := u.match(e, lead)
 	if i < 0 {
 		u.open(e, lead)
 		return
 	}
 	c := &u.cases[i]
-	if c.State == Closed || slices.Contains(u.fresh, i) {
-		return // one disturbance of that resource was told tonight
+	if c.State == Closed || slices.Contains(u.taken, i) {
+		return // that resource's disturbance was told tonight
 	}
+	u.taken = append(u.taken, i)
 	before, _ := c.Lead()
-	if e.Score < 0.5*c.Explanation.Score && before.Class != lead.Class {
-		return // a second cause on the same resource; the first goes on
-	}
 	c.Explanation = e
 	if !slices.Contains(c.Resources, lead.Resource) {
 		c.Resources = append(c.Resources, lead.Resource)
@@ -233,6 +232,11 @@ func (u *updating) explain(e Explanation) {
 		}
 	}
 	u.impact(i, e.Impact, true)
+}
+
+func isHarmless(c Cause) bool {
+	t, _ := TraitOf(c)
+	return t.Harmless
 }
 
 func (u *updating) impact(i int, v float64, say bool) {
@@ -258,7 +262,7 @@ func (u *updating) open(e Explanation, lead Candidate) {
 	}
 	u.cases = append(u.cases, c)
 	i := len(u.cases) - 1
-	u.fresh = append(u.fresh, i)
+	u.fresh, u.taken = append(u.fresh, i), append(u.taken, i)
 	u.impact(i, e.Impact, false)
 	u.say(i, ChangeOpened, "%s", e.Sentence)
 }
