@@ -40,16 +40,15 @@ const (
 	NoiseRise        CauseKind = "noise"              // factor on the noise minus one
 )
 
-// CauseKinds lists every kind with its unit, in the order above.
-func CauseKinds() []struct {
+// A KindUnit is a kind of cause with the unit of its size.
+type KindUnit struct {
 	Kind CauseKind
 	Unit string
-} {
-	type row = struct {
-		Kind CauseKind
-		Unit string
-	}
-	return []row{
+}
+
+// CauseKinds lists every kind with its unit, in the order above.
+func CauseKinds() []KindUnit {
+	return []KindUnit{
 		{ElectrodeOffset, "pH"}, {ElectrodeSlope, "%"}, {ElectrodeAgeing, "%"}, {ElectrodeLag, "%"},
 		{BufferLow, "pH"}, {BufferMid, "pH"}, {BufferHigh, "pH"}, {MeterCompensates, "K"},
 		{RoomTemperature, "K"}, {CellTemperature, "K"}, {ScaleShift, "nm"}, {ScaleTilt, "nm/100 nm"},

@@ -29,7 +29,11 @@ type Scenario struct {
 	Design Design
 	Noise  Noise
 	Causes []Cause
-	Faults map[int][]Fault // by night; strikes the first set of that night
+
+	// Faults and FileFaults strike the first set of a night, by night; the
+	// keys are those of FaultKeys and of FileFaultKeys.
+	Faults     map[int][]Fault
+	FileFaults map[int][]Fault
 }
 
 // dice are independent random numbers for one purpose.

@@ -43,8 +43,9 @@ type Delay struct {
 }
 
 // Score compares. Truths of expectation "nothing" count neither for nor
-// against; a case matches an episode when its resource is one of the
-// episode's, its cause begins with an accepted class, and it was opened
+// against. A case matches an episode when its resource is one of the
+// episode's (any, if the episode names none), its cause or one of its further
+// candidates begins with an accepted class, and it was opened
 // between the episode's first night and two nights after its last.
 func Score(truth []Truth, found Found) ScoreCard {
 	sc := &scorer{truth: truth, sets: map[string]FoundSet{}, files: map[string]string{}, lines: map[string]*ScoreLine{}, taken: make([]bool, len(found.Cases)), found: found}
@@ -138,7 +139,7 @@ func (s *scorer) episode(t Truth) {
 }
 
 func fitsResource(t Truth, name string) bool {
-	return name == t.Resource || slices.Contains(t.Resources, name)
+	return t.Resource == "" || name == t.Resource || slices.Contains(t.Resources, name)
 }
 
 func fitsCause(t Truth, cause string) bool {

@@ -34,7 +34,9 @@ func fileFaultTable() map[string]fileFault {
 		"file.multi":       one(func(b []byte, _ Fault, _ *rand.Rand) []byte { return nameless(b) }),
 		"file.mislabelled": one(func(b []byte, _ Fault, _ *rand.Rand) []byte { return percentCalledAbsorbance(b) }),
 		"file.copy":        again(func(f File) File { f.Path = copyName(f.Path); return f }),
-		"file.normform":    one(func(b []byte, _ Fault, _ *rand.Rand) []byte { return bytes.ReplaceAll(b, []byte(" (nm)"), []byte("\u00a0(nm)")) }),
+		"file.normform": one(func(b []byte, _ Fault, _ *rand.Rand) []byte {
+			return bytes.ReplaceAll(b, []byte(" (nm)"), []byte("\u00a0(nm)"))
+		}),
 		"file.litter":      litter,
 		"file.spreadsheet": spreadsheet,
 		"name.typo":        renamed(func(p string, rng *rand.Rand) string { return typo(p, rng.IntN(2) == 0) }),
