@@ -59,10 +59,7 @@ func standards() []standard {
 				return 2073.44/k - 13.3270 + 0.045199*k - 3.4846e-5*k*k
 			}},
 		{key: "phthalate-1946", name: "potassium hydrogen phthalate", recipe: "0.05 mol/kg", source: "Hamer, Pinching & Acree, J. Res. NBS 36 (1946) 47", u: 0.002, low: 0, high: 60,
-			equation: func(t float64) float64 {
-				k := t + 273.16 // the ice point as the paper has it
-				return 1336.08/k - 5.2678 + 0.016069*k
-			}},
+			equation: func(t float64) float64 { return 4.000 + 4.79e-5*(t-15)*(t-15) }},
 	}
 }
 

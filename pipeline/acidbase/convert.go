@@ -44,7 +44,8 @@ func ParseConstant(word string) (Constant, error) {
 
 // A Term is one row of an uncertainty: an input named by its key, the
 // sensitivity of the result to it and the standard uncertainty of the input.
-// Terms with equal keys in two results are the same error.
+// Terms with equal keys in two results are the same error; a term without a key
+// belongs to its result alone.
 type Term struct {
 	Key  string  `json:"key"`
 	Name string  `json:"name"`
@@ -53,14 +54,15 @@ type Term struct {
 	Unit string  `json:"unit"`
 }
 
-// Combined is the root sum of squares of the terms, each key counted once.
+// Combined is the root sum of squares of the terms. Terms of one key must name
+// the same input and uncertainty: their sensitivities are added first.
 func Combined(terms []Term) float64 {
 	sum := 0.0
 	for i, t := range terms {
 		c := t.C
 		repeated := false
 		for j, o := range terms {
-			if o.Key != t.Key || j == i {
+			if o.Key != t.Key || j == i || t.Key == "" {
 				continue
 			}
 			if j < i {

@@ -29,7 +29,7 @@ type Series struct {
 	Cov      []float64 // k*k, everything included
 	U        float64   // standard uncertainty of Coef[0]
 	UOwn     float64   // of it, from what the points do not share
-	Terms    []Term    // shared inputs, with their sensitivity on Coef[0], and one row "own"
+	Terms    []Term    // shared inputs, with their sensitivity on Coef[0], and one own row without a key
 	Gain     []float64 // n: d Coef[0] / d pKa of each point
 	Residual []float64 // n, pKa
 	ZOut     []float64 // n: each point against the line through the others, in its standard uncertainty
@@ -264,7 +264,7 @@ func (s *Series) terms(keys []string, load [][]float64, rows [][]Term) {
 		}
 		s.Terms = append(s.Terms, t)
 	}
-	s.Terms = append(s.Terms, Term{Key: "own", Name: "points of the series", C: 1, U: s.UOwn, Unit: "1"})
+	s.Terms = append(s.Terms, Term{Name: "points of the series", C: 1, U: s.UOwn, Unit: "1"})
 }
 
 // leaveOneOut compares every point with what the others and the shared errors

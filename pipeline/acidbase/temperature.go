@@ -56,3 +56,20 @@ func ToTemperature(pKa, enthalpyKJ, heatCapacity, fromC, toC, uT, uH float64, te
 		{Key: enthalpyKey, Name: "enthalpy of ionisation", C: dh, U: uH, Unit: "kJ/mol"},
 	}
 }
+
+// CarbonatePK are the two constants of carbonic acid at tC and I = 0 (Plummer &
+// Busenberg, Geochim. Cosmochim. Acta 46 (1982) 1011), 0..90 C.
+func CarbonatePK(tC float64) (first, second float64) {
+	t := tC + Kelvin
+	lg := math.Log10(t)
+	first = 356.3094 + 0.06091964*t - 21834.37/t - 126.8339*lg + 1684915/(t*t)
+	second = 107.8871 + 0.03252849*t - 5151.79/t - 38.92561*lg + 563713.9/(t*t)
+	return first, second
+}
+
+// AmmoniumPK is the constant of the ammonium ion at tC and I = 0 (Bates &
+// Pinching, J. Res. NBS 42 (1949) 419), 0..50 C.
+func AmmoniumPK(tC float64) float64 {
+	t := tC + Kelvin
+	return 2835.76/t - 0.6322 + 0.001225*t
+}
