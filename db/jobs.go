@@ -86,3 +86,14 @@ func (s *Store) RecordOf(ctx context.Context, q Querier, resultID int64) ([]byte
 	}
 	return raw, nil
 }
+
+// SetsWithCalibrations gives the sets whose current result used one of the calibrations.
+func (s *Store) SetsWithCalibrations(ctx context.Context, q Querier, calibrations map[int64]bool) ([]int64, error) {
+	var ids []int64
+	for id := range calibrations {
+		ids = append(ids, id)
+	}
+	return s.ids(ctx, q, `
+		SELECT DISTINCT r.set_id FROM pkvigil.result r JOIN pkvigil.standing st ON st.result_id = r.id
+		WHERE r.calibration_id = ANY($1) AND st.is_current ORDER BY 1`, ids)
+}

@@ -217,6 +217,7 @@ type Said struct {
 	MessageID int64
 	Key       string
 	Kind      string
+	CaseID    *int64
 	Reason    string
 	Subject   string
 	At        time.Time
