@@ -28,7 +28,7 @@ func (g *grid) kind(b block, row, col int) int8     { return g.decs[b.off+row*b.
 // numeric appends the cells of a line and reports their number; 0 means that
 // the line is no row of numbers. The first cell that is not empty must be a
 // number, at least half of the cells numbers, marks or empty.
-func (d dialect) numeric(line []byte, vals []float64, decs []int8, fields [][]byte) ([]float64, []int8, int, [][]byte) {
+func (d *dialect) numeric(line []byte, vals []float64, decs []int8, fields [][]byte) ([]float64, []int8, int, [][]byte) {
 	if !d.joined {
 		if v, c, n := d.fast(line, vals, decs); n > 0 {
 			return v, c, n, fields
@@ -60,30 +60,40 @@ func (d dialect) numeric(line []byte, vals []float64, decs []int8, fields [][]by
 }
 
 // fast reads a line of plain numbers in one pass without cutting it first.
-func (d dialect) fast(line []byte, vals []float64, decs []int8) ([]float64, []int8, int) {
+func (d *dialect) fast(line []byte, vals []float64, decs []int8) ([]float64, []int8, int) {
 	if len(d.marks) > 0 {
 		return vals, decs, 0
 	}
 	n0, i := len(vals), 0
+	delim, point := d.delim, d.point
 	for {
-		for i < len(line) && (line[i] == ' ' || line[i] == '\t' && d.delim != '\t') {
+		for i < len(line) && (line[i] == ' ' || line[i] == '\t' && delim != '\t') {
 			i++
 		}
-		v, dec, k := parse.Prefix(line[i:], d.point)
+		v, dec, k := parse.Prefix(line[i:], point)
 		if k == 0 {
 			return vals[:n0], decs[:n0], 0
 		}
 		vals, decs = append(vals, v), append(decs, int8(min(dec, 99)))
-		i += k
+		if i += k; i == len(line) {
+			return vals, decs, len(vals) - n0
+		}
+		if line[i] == delim && delim != ' ' {
+			if i++; i < len(line) {
+				continue
+			}
+			vals, decs = append(vals, math.NaN()), append(decs, cellEmpty)
+			return vals, decs, len(vals) - n0
+		}
 		from := i
-		for i < len(line) && (line[i] == ' ' || line[i] == '\t' && d.delim != '\t') {
+		for i < len(line) && (line[i] == ' ' || line[i] == '\t' && delim != '\t') {
 			i++
 		}
 		switch {
 		case i == len(line):
 			return vals, decs, len(vals) - n0
-		case d.delim == ' ' && i > from:
-		case line[i] == d.delim:
+		case delim == ' ' && i > from:
+		case line[i] == delim:
 			if i++; i == len(line) {
 				vals, decs = append(vals, math.NaN()), append(decs, cellEmpty)
 				return vals, decs, len(vals) - n0
@@ -96,7 +106,7 @@ func (d dialect) fast(line []byte, vals []float64, decs []int8) ([]float64, []in
 
 // join puts neighbouring fields together where the comma both delimits fields
 // and marks decimals. With an odd number of fields the first stands alone.
-func (d dialect) join(vals []float64, decs []int8, fields [][]byte) ([]float64, []int8, int, [][]byte) {
+func (d *dialect) join(vals []float64, decs []int8, fields [][]byte) ([]float64, []int8, int, [][]byte) {
 	n0 := len(vals)
 	fail := func() ([]float64, []int8, int, [][]byte) { return vals[:n0], decs[:n0], 0, fields }
 	if len(fields) < 3 {
@@ -182,11 +192,12 @@ func (d dialect) hopeful(s *source) bool {
 	var vals []float64
 	var decs []int8
 	var fields [][]byte
-	const looks = 24
+	const looks = 9
 	n := len(s.spans)
 	for k := range min(looks, n) {
+		at := n/2 + (1-2*(k%2))*((k+1)/2)*n/(looks+1) // the middle first, then outward
 		var cols int
-		vals, decs, cols, fields = d.numeric(s.line((2*k+1)*n/(2*min(looks, n))), vals[:0], decs[:0], fields)
+		vals, decs, cols, fields = d.numeric(s.line(min(max(at, 0), n-1)), vals[:0], decs[:0], fields)
 		if cols >= 2 {
 			return true
 		}

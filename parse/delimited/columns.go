@@ -262,8 +262,8 @@ func (r *reader) scan(a *reading, t trace, f facts, pre []entry, of int) (parse.
 	line := a.b.first + 1
 	n := a.b.rows
 	x, y, decs := make([]float64, 0, n), make([]float64, 0, n), make([]int8, 0, n)
-	for i := range n {
-		kind, ak := a.g.kind(a.b, i, t.col), a.g.kind(a.b, i, t.axis)
+	for i, at := 0, a.b.off; i < n; i, at = i+1, at+a.b.cols {
+		kind, ak := a.g.decs[at+t.col], a.g.decs[at+t.axis]
 		if a.shape == "pairs" && ak == cellEmpty && kind == cellEmpty {
 			continue // this pair is shorter than the longest
 		}
@@ -273,11 +273,11 @@ func (r *reader) scan(a *reading, t trace, f facts, pre []entry, of int) (parse.
 		if kind == cellText {
 			return parse.Scan{}, r.refuse(line+i, fmt.Sprintf("column %d", t.col+1), parse.Show(r.cell(a, i, t.col)), "a number", "export the file again")
 		}
-		v := a.g.value(a.b, i, t.col)
+		v := a.g.vals[at+t.col]
 		if t.quantity == "counts" {
 			v = r.fromCounts(a, i)
 		}
-		x, y, decs = append(x, a.g.value(a.b, i, t.axis)), append(y, v), append(decs, kind)
+		x, y, decs = append(x, a.g.vals[at+t.axis]), append(y, v), append(decs, kind)
 	}
 	if len(x) < leastDeclared {
 		return parse.Scan{}, r.refuse(line, fmt.Sprintf("column %d", t.col+1), fmt.Sprintf("%d values", len(x)), "a spectrum", "export the file again")

@@ -38,14 +38,12 @@ func moment(text, layout string, zone *time.Location) (t time.Time, zoned bool, 
 		}
 		return plausible(t, zoned, note, text)
 	}
-	for _, form := range [...]string{time.RFC3339Nano, "2006-01-02 15:04:05.999999999Z07:00", "2006-01-02 15:04:05.999999999 Z07:00", "2006-01-02 15:04:05 -0700", "2006-01-02T15:04:05-0700", "20060102T150405Z", "2006-01-02T15:04Z07:00"} {
-		if t, err = time.Parse(form, text); err == nil {
-			return plausible(t, true, "", text)
-		}
-	}
-	for _, form := range [...]string{"2006-01-02T15:04:05.999999999", "2006-01-02T15:04", "20060102T150405", "20060102150405", "20060102-150405"} {
-		if t, err = time.ParseInLocation(form, text, zone); err == nil {
-			return plausible(t, false, doubt(t, zone), text)
+	if len(text) > 10 && text[0]-'0' <= 9 {
+		if t, zoned, ok := standard(text, zone); ok {
+			if !zoned {
+				note = doubt(t, zone)
+			}
+			return plausible(t, zoned, note, text)
 		}
 	}
 	day, clock, zoneName := dissect(text)
@@ -73,6 +71,24 @@ func moment(text, layout string, zone *time.Location) (t time.Time, zoned bool, 
 		note = d
 	}
 	return plausible(t, zoned, note, text)
+}
+
+// standard reads the forms that begin with the year.
+func standard(text string, zone *time.Location) (t time.Time, zoned, ok bool) {
+	forms := [...]string{"2006-01-02T15:04:05.999999999", "2006-01-02 15:04:05.999999999", "2006-01-02T15:04", "2006-01-02 15:04", "20060102T150405", "20060102150405", "20060102-150405"}
+	if tail := text[10:]; strings.ContainsAny(tail, "Z+") || strings.LastIndexByte(tail, '-') > 2 {
+		for _, form := range [...]string{time.RFC3339Nano, "2006-01-02 15:04:05.999999999Z07:00", "2006-01-02 15:04:05.999999999 Z07:00", "2006-01-02 15:04:05 -0700", "2006-01-02T15:04:05-0700", "20060102T150405Z07:00", "2006-01-02T15:04Z07:00"} {
+			if t, err := time.Parse(form, text); err == nil {
+				return t, true, true
+			}
+		}
+	}
+	for _, form := range forms {
+		if t, err := time.ParseInLocation(form, text, zone); err == nil {
+			return t, false, true
+		}
+	}
+	return time.Time{}, false, false
 }
 
 func plausible(t time.Time, zoned bool, note, text string) (time.Time, bool, string, error) {

@@ -108,6 +108,9 @@ func (r *reader) whichTransmittance(field, q string, y []float64, line int) (str
 // sentinel tells whether a value consists of nines only, as instruments write
 // where the range ends (common practice, no source).
 func sentinel(v float64) bool {
+	if v > -9 && v < 9 {
+		return false
+	}
 	switch math.Abs(v) {
 	case 9.9, 9.99, 9.999, 9.9999, 9.99999, 9.999999, 99, 99.9, 99.99, 99.999, 99.9999, 99.99999, 999, 999.9, 999.99, 999.999, 999.9999, 9999, 9999.9, 9999.99, 9999.999, 99999, 99999.9:
 		return true

@@ -136,14 +136,11 @@ func colWords(c int) string {
 func column(head string) (kind int, unit string) {
 	bare, unit := unitOf(head)
 	f := fold(bare)
-	w := strings.ReplaceAll(strings.TrimSpace(f), " ", "_")
+	w := underlined(f)
 	if strings.EqualFold(unit, "mV") {
 		return colMilliVolt, unit
 	}
-	for c := colRung; c < colCount; c++ {
-		if !oneOf(w, colWords(c)) {
-			continue
-		}
+	for _, c := range lexis().columns[w] {
 		switch {
 		case (c == colClock || c == colTime || c == colTemperature && w == "t") && timeUnit(unit) > 0:
 			return colElapsed, unit
@@ -225,10 +222,16 @@ func (t *table) field(meaning int) string {
 // want is the kind the file must be, or "" for any. Nil where no line
 // qualifies.
 func (r *reader) table(want string) *table {
-	const search, longestHeads = 120, 8192
+	const search, longestHeads, inData = 120, 8192, 8
 	var best *table
+	rows := 0 // lines in a row that look like data: heads do not follow them
 	for i := range min(search, len(r.src.spans)) {
 		line := r.src.line(i)
+		if wordy(line) {
+			rows = 0
+		} else if rows++; rows > inData && r.lay.HeaderLine == 0 {
+			break
+		}
 		if r.lay.HeaderLine > 0 && i != r.lay.HeaderLine-1 || !wordy(line) || len(line) > longestHeads {
 			continue
 		}
@@ -237,6 +240,9 @@ func (r *reader) table(want string) *table {
 				continue
 			}
 			if delim == ' ' && bytes.ContainsAny(line, "\t;,|") {
+				continue
+			}
+			if want == "long" && bytes.Count(line, []byte{delim}) < 2 {
 				continue
 			}
 			t := r.headed(i, delim)

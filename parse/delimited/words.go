@@ -3,6 +3,7 @@ package delimited
 import (
 	"strings"
 	"unicode"
+	"unicode/utf8"
 
 	"golang.org/x/text/unicode/norm"
 
@@ -32,6 +33,10 @@ const (
 // fold makes words comparable: lower case, accents off, everything but
 // letters, digits, per cent and number sign a blank, one blank at each end.
 func fold(s string) string {
+	var room [128]byte
+	if out, ok := foldASCII(s, room[:]); ok {
+		return string(out)
+	}
 	var b strings.Builder
 	b.WriteByte(' ')
 	gap := true
@@ -86,35 +91,53 @@ const (
 	wordsOther         = "reflectance reflectancia reflectivity reflexion reflection reflexionsgrad remission riflettanza irradiance radiance fluorescence fluoreszenz emission intensity intensities intensitat intensitaet intensite intensidad counts count cts scope raw signal energy energie volume volumen conductivity potential dark reference ref"
 	wordsTime          = "time zeit temps tiempo tempo tijd tid czas время elapsed seconds second minutes minute sec min s hours zeitpunkt"
 	wordsPercent       = "% percent prozent pct pourcent"
+	wordsNM            = "nm nanometer nanometers nanometre nanometres"
+	wordsUM            = "um µm μm micrometer micrometers micrometre micron microns mikrometer"
+	wordsAngstrom      = "angstrom angstroms angstroem"
 )
 
 // quantity tells what the head of a column, with its unit, says it holds.
 // Single letters are left to the caller.
 func quantity(head string) string {
 	f := fold(head)
-	lower := strings.ToLower(head)
+	bits := lexis().senses(f)
+	foreign := !ascii(head)
 	switch {
-	case axisUnit(head) == unitPerCM, says(f, wordsWavenumber), holds(f, "波数"):
+	case perCM(head), bits&senseWavenumber != 0, foreign && holds(f, "波数"):
 		return qWavelength
-	case says(f, wordsMilli):
+	case bits&senseMilli != 0:
 		return qMilli
-	case strings.Contains(lower, "%t") || strings.Contains(lower, "% t") || strings.Contains(lower, "t%") || says(f, "t_%"):
+	case strings.IndexByte(f, '%') >= 0 && percentT(head):
 		return qPercent
-	case says(f, wordsTransmittance), holds(f, "透过率 透射率 透光率"):
-		if strings.Contains(f, "%") || says(f, wordsPercent) {
+	case bits&senseTransmittance != 0, foreign && holds(f, "透过率 透射率 透光率"):
+		if bits&sensePercent != 0 || strings.IndexByte(f, '%') >= 0 {
 			return qPercent
 		}
 		return qTransmittance
-	case says(f, wordsAbsorbance), holds(f, "吸光度"):
+	case bits&senseAbsorbance != 0, foreign && holds(f, "吸光度"):
 		return qAbsorbance
-	case says(f, wordsOther):
+	case bits&senseOther != 0:
 		return qOther
-	case says(f, wordsWavelength), holds(f, "波长 波長"), strings.Contains(head, "Å"), strings.Contains(head, "Å"):
+	case bits&senseWavelength != 0, foreign && (holds(f, "波长 波長") || strings.ContainsAny(head, "ÅÅ")):
 		return qWavelength
-	case says(f, wordsTime), holds(f, "时间 時間"):
+	case bits&senseTime != 0, foreign && holds(f, "时间 時間"):
 		return qTime
 	}
 	return qUnknown
+}
+
+func percentT(head string) bool {
+	lower := strings.ToLower(head)
+	return strings.Contains(lower, "%t") || strings.Contains(lower, "% t") || strings.Contains(lower, "t%") || strings.Contains(fold(head), " t % ")
+}
+
+func ascii(s string) bool {
+	for i := range len(s) {
+		if s[i] >= utf8.RuneSelf {
+			return false
+		}
+	}
+	return true
 }
 
 // mere tells whether a head names nothing but a quantity and its unit, so that
@@ -125,26 +148,39 @@ func mere(head string) bool {
 		return false
 	}
 	for _, w := range f {
-		if quantity(w) == qUnknown && !says(" "+w+" ", "a t y a_u u arb units "+wordsPercent) {
+		if quantity(w) == qUnknown && !oneOf(w, "a t y u arb units "+wordsPercent) {
 			return false
 		}
 	}
 	return true
 }
 
+// perCM tells whether text states the unit of a wavenumber.
+func perCM(head string) bool {
+	if !strings.Contains(head, "cm") && !strings.Contains(head, "CM") {
+		return false
+	}
+	lower := strings.ToLower(head)
+	for _, u := range [...]string{"cm-1", "cm^-1", "cm⁻¹", "1/cm", "cm−1", "cm**-1"} {
+		if strings.Contains(lower, u) {
+			return true
+		}
+	}
+	return false
+}
+
 // axisUnit finds the unit of a wavelength axis in the head of its column or
 // the cell of a units row; "" where none is stated.
 func axisUnit(head string) string {
-	f := fold(head)
-	lower := strings.ToLower(norm.NFC.String(head))
+	bits := lexis().senses(fold(head))
 	switch {
-	case strings.Contains(lower, "cm-1"), strings.Contains(lower, "cm^-1"), strings.Contains(lower, "cm⁻¹"), strings.Contains(lower, "1/cm"), strings.Contains(lower, "cm−1"):
+	case perCM(head):
 		return unitPerCM
-	case says(f, "nm nanometer nanometers nanometre nanometres"):
+	case bits&senseNM != 0:
 		return unitNM
-	case says(f, "um µm μm micrometer micrometers micrometre micron microns mikrometer"):
+	case bits&senseUM != 0:
 		return unitUM
-	case says(f, "angstrom angstroms angstroem"), strings.Contains(lower, "å"):
+	case bits&senseAngstrom != 0, !ascii(head) && strings.ContainsAny(norm.NFC.String(head), "Åå"):
 		return unitAngstrom
 	}
 	return ""
@@ -216,16 +252,7 @@ func headerWords(key int) string {
 // headerKey tells what a header key means; 0 where it is not known.
 func headerKey(key string) int {
 	name, _ := unitOf(key)
-	w := strings.ReplaceAll(strings.TrimSpace(fold(name)), " ", "_")
-	if w == "" {
-		return 0
-	}
-	for k := keySample; k < keyCount; k++ {
-		if oneOf(w, headerWords(k)) {
-			return k
-		}
-	}
-	return 0
+	return lexis().keys[underlined(fold(name))]
 }
 
 // oneOf tells whether w is one of the words.
