@@ -51,7 +51,7 @@ func (s *Story) harm(b Booking) (float64, string) {
 }
 
 // TruthOf is what is true of one night.
-func (s *Story) TruthOf(night int) []Truth { return s.make(night).truth }
+func (s *Story) TruthOf(night int) []Truth { return s.play(night, true).truth }
 
 // Truth is what is true of all nights, in order.
 func (s *Story) Truth() []Truth {

@@ -10,6 +10,7 @@ import (
 type nightMaker struct {
 	story    *Story
 	night    int
+	quiet    bool // only the truth is wanted: sets are not measured unless their files must be named
 	deposits []Deposit
 	truth    []Truth
 }
@@ -19,12 +20,12 @@ type nightMaker struct {
 // evening, exports of both instruments with whatever befalls them, outages,
 // and the signatures of the morning after.
 func (s *Story) Deposits(night int) []Deposit {
-	return s.make(night).deposits
+	return s.play(night, false).deposits
 }
 
-// make plays one night.
-func (s *Story) make(night int) *nightMaker {
-	m := &nightMaker{story: s, night: night}
+// play goes through one night.
+func (s *Story) play(night int, quiet bool) *nightMaker {
+	m := &nightMaker{story: s, night: night, quiet: quiet}
 	if night < 1 || night > storyNights {
 		return m
 	}
@@ -86,8 +87,12 @@ func (m *nightMaker) evening() {
 // set measures a booking, lets its trouble strike and writes its files.
 func (m *nightMaker) set(b Booking, first bool) {
 	s := m.story
-	set := s.Set(b)
 	t := s.troubleOf(b, first)
+	if m.quiet && t.key == "" {
+		m.tellSet(b, nil, t)
+		return
+	}
+	set := s.Set(b)
 	rng := dice(s.seed, "strike", m.night, b.Key())
 	switch t.key {
 	case "scan.bubble", "name.swap2", "name.shift1", "name.missing":

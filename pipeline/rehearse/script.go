@@ -63,7 +63,7 @@ func (m *nightMaker) tellSet(b Booking, set *Set, t trouble) {
 	harm, resource := m.story.harm(b)
 	spoiled := t.key == "scan.bubble" || t.key == "name.swap2" || t.key == "name.shift1" || t.key == "name.blankwrong"
 	clean := !spoiled && b.Lot != impureLot && harm < 0.003 && harm > -0.003
-	m.tell(Truth{Key: "set.pka", Kind: KindPKa, Set: b.Key(), Compound: b.Compound, PKa: set.PKa, Clean: clean, Size: harm, Unit: "pH"})
+	m.tell(Truth{Key: "set.pka", Kind: KindPKa, Set: b.Key(), Compound: b.Compound, PKa: m.story.constantsOf(b), Clean: clean, Size: harm, Unit: "pH"})
 	if harm > 0.003 || harm < -0.003 {
 		m.tell(Truth{Key: "set.harm", Kind: KindHarm, Set: b.Key(), Resource: resource, Size: harm, Unit: "pH"})
 	}

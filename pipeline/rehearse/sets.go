@@ -51,6 +51,18 @@ func (s *Story) lotOf(b Booking, c *Conditions) {
 	}
 }
 
+// constantsOf are the true mixed constants of a booked set at 25.0 C and the
+// nominal ionic strength.
+func (s *Story) constantsOf(b Booking) []float64 {
+	var c Conditions
+	s.lotOf(b, &c)
+	var out []float64
+	for _, p := range s.dyes[b.Dye].PKa {
+		out = append(out, p+c.PKaShift)
+	}
+	return out
+}
+
 // nuisance is what an ordinary night does to a set, in the order in which the
 // story's rates are listed. At most one strikes a set.
 type nuisance struct {
