@@ -25,6 +25,7 @@ type Case struct {
 	ClosedWhy   string      `json:"closed_why,omitempty"`
 	Explanation Explanation `json:"explanation"` // the latest that supported it
 	Resources   []Resource  `json:"resources"`   // all that were named first so far
+	Parts       []Mask      `json:"parts"`       // every cause that was joined to the case
 	Instruments []string    `json:"instruments"` // affected
 	Impact      float64     `json:"impact"`      // largest absolute change of a reference's pKa so far, upper 95 % bound
 	OverLimit   bool        `json:"over_limit"`
@@ -49,16 +50,28 @@ func (e Explanation) Lead() (Candidate, bool) {
 	return Candidate{}, false
 }
 
-// Mask takes the disturbance of a closed case out of later evaluations.
-func (c Case) Mask() Mask {
-	m := Mask{Resource: c.Resource, Cause: Unknown, From: c.Opened, Until: c.Closed}
-	if lead, ok := c.Lead(); ok {
-		m.Resource, m.Cause, m.From = lead.Resource, lead.Cause, lead.Since.Low
+// Masks take the disturbances of a closed case out of later evaluations.
+func (c Case) Masks() []Mask {
+	until := c.Closed
+	if c.Inside > 0 && c.LastSeen > c.Opened && c.LastSeen < until {
+		until = c.LastSeen
 	}
-	if c.Inside > 0 && c.LastSeen >= m.From && c.LastSeen < m.Until {
-		m.Until = c.LastSeen
+	out := slices.Clone(c.Parts)
+	for i := range out {
+		out[i].Until = max(until, out[i].From)
 	}
-	return m
+	return out
+}
+
+// join records a cause of the case with the earliest onset it was given.
+func (c *Case) join(k Candidate) {
+	for i, p := range c.Parts {
+		if p.Resource == k.Resource && p.Cause == k.Cause {
+			c.Parts[i].From = min(p.From, k.Since.Low)
+			return
+		}
+	}
+	c.Parts = append(c.Parts, Mask{Resource: k.Resource, Cause: k.Cause, From: k.Since.Low})
 }
 
 // Watch asks the next evaluation whether the disturbance still shows; false
@@ -126,11 +139,11 @@ type Decision struct {
 // Update moves the open cases on by one night. It is pure: the same input
 // gives the same output, and open is not changed. A night without data neither opens
 // nor closes a case. Cases closed in this night are returned with their
-// transition and need not be passed again; further evaluations should have their Mask.
+// transition and need not be passed again; further evaluations should have their Masks.
 func Update(open []Case, ev Evaluation, events []Event, decisions []Decision, rules CaseRules) ([]Case, []Transition) {
 	u := &updating{ev: ev, rules: rules.filled()}
 	for _, c := range open {
-		c.Resources, c.Instruments = slices.Clone(c.Resources), slices.Clone(c.Instruments)
+		c.Resources, c.Instruments, c.Parts = slices.Clone(c.Resources), slices.Clone(c.Instruments), slices.Clone(c.Parts)
 		u.cases = append(u.cases, c)
 	}
 	u.decide(decisions)
@@ -211,6 +224,7 @@ func (u *updating) explain(e Explanation, lead Candidate) {
 		return
 	}
 	c := &u.cases[i]
+	c.join(lead)
 	if c.State == Closed || slices.Contains(u.taken, i) {
 		return // that resource's disturbance was told tonight
 	}
@@ -253,13 +267,14 @@ func (u *updating) impact(i int, v float64, say bool) {
 }
 
 func (u *updating) open(e Explanation, lead Candidate) {
-	if !u.ev.Rings && e.Score <= u.ev.Threshold {
+	if e.Minor || e.Score <= u.ev.Threshold || (e.Retired && isHarmless(lead.Cause)) {
 		return
 	}
 	c := Case{
 		Resource: lead.Resource, State: Open, Opened: u.ev.Night, Explanation: e,
 		Resources: []Resource{lead.Resource}, Instruments: slices.Clone(e.Instruments), LastSeen: u.ev.Night,
 	}
+	c.join(lead)
 	u.cases = append(u.cases, c)
 	i := len(u.cases) - 1
 	u.fresh, u.taken = append(u.fresh, i), append(u.taken, i)

@@ -102,7 +102,7 @@ func smallLab(t *testing.T, nights int) (*lab, *Model, History) {
 	last := first + Night(nights) - 1
 	f := family()
 	l := buildLab(2, []Design{f[0], f[2]}, []string{"RI-A", "RI-C"}, 14, first, last)
-	l.uses[5].Until = first + 10
+	l.uses[5].Until = first + 7
 	l.uses = append(l.uses, Use{Resource{KindLamp, "L-new"}, "", "U1/RI-A", first + 11, last})
 	m, err := NewModel(l.cells, Rules{}, Plain)
 	if err != nil {
@@ -128,7 +128,7 @@ func smallLab(t *testing.T, nights int) (*lab, *Model, History) {
 // Every onset and shape of every hypothesis must weigh the same as in dense
 // algebra, before and after an explained cause has gone into the covariance.
 func TestScanAgainstDense(t *testing.T) {
-	_, m, h := smallLab(t, 18)
+	_, m, h := smallLab(t, 12)
 	l, err := m.newLook(h)
 	if err != nil {
 		t.Fatal(err)

@@ -48,6 +48,7 @@ func (l *look) describe(r *ranked, found []*ranked) Explanation {
 		}
 	}
 	e.Impact = l.impact(top)
+	e.Retired = l.retired(top.out.s, l.m.traits[top.out.s.trait].Role)
 	e.Alike = l.alike(r)
 	e.Next = l.next(r)
 	e.Sentence = l.sentence(top, e)
@@ -221,7 +222,8 @@ func electrodeSize(c Cause) bool {
 func (l *look) judge(e *Explanation, none float64) {
 	first := e.Candidates[0]
 	switch {
-	case first.Cause == Unknown || e.P < 0.01:
+	case first.Cause == Unknown || (e.P < 0.01 && e.ChiSquare-float64(e.DOF) > 0.5*e.Score):
+		// improbable, and what is left is a quarter or more of what was explained
 		e.Finding = NoneKnown
 	case first.Probability >= l.m.rules.SayAt:
 		e.Finding = Named
@@ -232,20 +234,20 @@ func (l *look) judge(e *Explanation, none float64) {
 	}
 }
 
-// fit tests what all found causes together leave since the onset.
+// fit tests what all found causes together leave since the onset, in the cells
+// the first of them acts on.
 func (l *look) fit(e *Explanation, top rankedCause, found []*ranked) {
 	pred := l.blank()
-	free := 0
 	for _, f := range found {
 		l.addPrediction(pred, f.list[0], 1)
-		free += l.m.traits[f.list[0].out.s.trait].Columns
 	}
+	free := l.m.traits[top.out.s.trait].Columns
 	type odd struct {
 		z    float64
 		text string
 	}
 	var odds []odd
-	for i := range l.cells {
+	for _, i := range top.out.s.cells {
 		s := &l.cells[i]
 		x, ok := s.left(pred[i], top.onset)
 		if !ok {

@@ -6,7 +6,8 @@ import (
 )
 
 // Evaluate judges the last night of h: the group score, the first cause and,
-// with each cause put into the covariance, further ones.
+// with each cause put into the covariance, further ones. It rings when a
+// disturbance above the threshold is large enough to matter.
 func (m *Model) Evaluate(h History) (Evaluation, error) {
 	l, err := m.newLook(h)
 	if err != nil {
@@ -18,30 +19,51 @@ func (m *Model) Evaluate(h History) (Evaluation, error) {
 		ev.Threshold = Threshold(ev.Hypotheses, m.tolerable())
 	}
 	l.standing(&ev)
-	var found []*ranked
-	for pass := range m.rules.MaxCauses {
+	found := l.passes(&ev)
+	for _, r := range found {
+		e := l.describe(r, found)
+		e.Minor = r.minor
+		ev.Rings = ev.Rings || !e.Minor
+		ev.Explanations = append(ev.Explanations, e)
+	}
+	return ev, nil
+}
+
+// passes finds causes one after the other, each with the earlier ones in the
+// covariance. Those too small to matter do not count towards MaxCauses.
+func (l *look) passes(ev *Evaluation) (found []*ranked) {
+	counted := 0
+	for counted < l.m.rules.MaxCauses && len(found) < 2*l.m.rules.MaxCauses && len(l.extra)+2 <= maxExtra {
 		outs, top := l.scanAll(true)
 		if top < 0 {
 			break
 		}
 		score := outs[top].best.lnB
-		if pass == 0 {
-			ev.Score, ev.Rings = score, score > ev.Threshold
+		if len(found) == 0 {
+			ev.Score = score
 		}
 		if score <= ev.Threshold {
 			break
 		}
 		r := l.rank(outs)
-		if len(r.list) == 0 {
-			break
+		first := r.list[0]
+		r.minor = l.minor(first)
+		if !r.minor {
+			counted++
 		}
 		found = append(found, r)
-		l.explain(r.list[0].out.s, r.list[0].shape, r.list[0].onset, r.list[0].h)
+		l.explain(first.out.s, first.shape, first.onset, first.h)
 	}
-	for _, r := range found {
-		ev.Explanations = append(ev.Explanations, l.describe(r, found))
+	return found
+}
+
+// minor reports whether a disturbance is, at its largest, below what is worth a case.
+func (l *look) minor(c rankedCause) bool {
+	peak := 0.0
+	for _, s := range l.course(c.out.s, c.shape, c.onset) {
+		peak = math.Max(peak, s)
 	}
-	return ev, nil
+	return peak*math.Max(math.Abs(c.h.theta[0]), math.Abs(c.h.theta[1])) < l.m.rules.Least
 }
 
 // Score gives the group score of the last night of h alone, and the number of
@@ -82,6 +104,7 @@ func (l *look) scanAll(keep bool) (outs []outcome, top int) {
 type ranked struct {
 	score float64
 	list  []rankedCause
+	minor bool
 	none  float64 // ln weight of "none of the known causes"
 	total float64 // ln of the sum of weights
 }

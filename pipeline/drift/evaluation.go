@@ -77,11 +77,14 @@ type Explanation struct {
 	Disagree         []string    `json:"disagree,omitempty"` // what the winner does not explain, in words
 	Alike            []string    `json:"alike,omitempty"`    // what these data cannot tell apart
 	Next             *Check      `json:"next,omitempty"`
-	Cells            []string    `json:"cells"`       // cells it acts on
-	Instruments      []string    `json:"instruments"` // of those cells
-	Impact           float64     `json:"impact"`      // upper 95 % bound of the largest change of a reference's pKa tonight
-	Touched          []Touched   `json:"touched"`     // what it does to each reference tonight
-	Sentence         string      `json:"sentence"`    // size, direction, since when
+	Cells            []string    `json:"cells"`             // cells it acts on
+	Instruments      []string    `json:"instruments"`       // of those cells
+	Impact           float64     `json:"impact"`            // upper 95 % bound of the largest change of a reference's pKa tonight
+	Touched          []Touched   `json:"touched"`           // what it does to each reference tonight
+	Retired          bool        `json:"retired,omitempty"` // the resource is no longer in use
+	// Minor: certain but too small to matter; recorded, not rung.
+	Minor    bool   `json:"minor,omitempty"`
+	Sentence string `json:"sentence"` // size, direction, since when
 }
 
 // Touched is the size of a disturbance in one characteristic of one cell on the last night.

@@ -143,6 +143,7 @@ type Rules struct {
 	Shrink           float64 // share by which correlations are shrunk to the diagonal; 0.1
 	EventFactor      float64 // prior odds of a cause whose event was logged within one night; 10
 	MaxCauses        int     // passes: 1 + second causes looked for; 3
+	Least            float64 // size in table units below which a disturbance is recorded and not rung; 0.2
 	SayAt            float64 // probability below which "cannot tell" is said; 0.8
 	Causes           []Cause // nil: all
 }
@@ -159,6 +160,7 @@ func DefaultRules(r Rules) Rules {
 	set(&r.Shrink, 0.1)
 	set(&r.EventFactor, 10)
 	set(&r.SayAt, 0.8)
+	set(&r.Least, 0.2)
 	if r.MaxCauses == 0 {
 		r.MaxCauses = 3
 	}

@@ -19,7 +19,8 @@ type lab struct {
 	cells       []Cell
 	uses        []Use
 	events      []Event
-	calibrate   int // nights between calibrations
+	calibrate   int            // nights between calibrations
+	setsOf      map[string]int // sets per night where it differs from draw's
 }
 
 var refNames = []string{"RI-A", "RI-B", "RI-C", "RI-E"}
@@ -188,6 +189,9 @@ func (l *lab) draw(m *Model, rng *rand.Rand, first, last Night, sets int, faults
 				continue
 			}
 			s := sets
+			if k := l.setsOf[c.Key]; k > 0 {
+				s = k
+			}
 			if c.Kind != ReferenceCell {
 				s = 1
 			}

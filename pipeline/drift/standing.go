@@ -109,7 +109,7 @@ func (l *look) watched(w Watch) Watched {
 		out.Retired = !out.Data && l.retired(s, tr.Role)
 		if den > 0 {
 			out.Expected, out.Share = math.Sqrt(den), num/den
-			out.Inside = out.Expected >= 2 && out.Share < 0.5 && num/math.Sqrt(den) < 2.5
+			out.Inside = out.Expected >= 2 && (out.Share < 0.25 || (out.Share < 0.5 && num/math.Sqrt(den) < 2.5))
 		}
 		return out
 	}
