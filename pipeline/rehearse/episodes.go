@@ -12,6 +12,18 @@ func (m *nightMaker) episodes() {
 			From:   nightDrift + 1, To: nightReplaced - 1, Size: -0.15, Unit: "% slope per night", Expect: ExpectCase,
 			Note: "offset +0.003 per night besides; from night 22 on -0.22 % and +0.004 after each calibration",
 		})
+	case nightRefill:
+		m.tell(Truth{
+			Key: "ageing.electrode", Kind: KindEpisode, Resource: "E-31", Resources: []string{instOne}, Cause: string(ElectrodeAgeing),
+			Accept: []string{"electrode.ageing"}, From: nightRefill, To: nightReplaced - 1, Size: -1, Unit: "%", Expect: ExpectNothing,
+			Note: "the calibration sees slope -1 % and potential -4 mV and takes them out",
+		})
+	case nightReplaced:
+		m.tell(Truth{
+			Key: "new.electrode", Kind: KindEpisode, Resource: "E-35", Resources: []string{instOne}, Cause: string(ElectrodeAgeing),
+			Accept: []string{"electrode.ageing"}, From: nightReplaced, To: nightReplaced + 2, Expect: ExpectNothing,
+			Note: "another electrode has another slope and potential",
+		})
 	case nightLamp:
 		m.tell(Truth{
 			Key: "scale.lamp", Kind: KindEpisode, Resource: instOne, Resources: []string{"L-13", "L-12"}, Cause: string(ScaleShift),

@@ -124,25 +124,33 @@ func (s *Story) compounds(w *tomlWriter) {
 		if name == "RI-C2" {
 			since = s.Date(nightNewLot)
 		}
-		w.list("compound", append(s.compoundKeys(d, name, `^`+name+`\.`),
+		w.list("compound", append(compoundKeys(d, name, `^`+name+`\.`),
 			"lot", b.Lot, "reference", true, "reference_lot", b.Lot, "since", since,
 			"assigned", d.PKa[0], "u_assigned", 0.004, "fixed_model", true)...)
 	}
 	w.text("\n# Products, by lot.")
 	for _, key := range []string{"BCG", "BCP", "PR", "CR", "TB"} {
 		d := s.dyes[key]
-		w.list("compound", append(s.compoundKeys(d, sampleCompounds()[key], `^(?P<lot>`+key+`-\d{4})\.`), "lot", "${lot}")...)
+		w.list("compound", append(compoundKeys(d, sampleCompounds()[key], `^(?P<lot>`+key+`-\d{4})\.`), "lot", "${lot}")...)
 	}
 }
 
 // compoundKeys are the keys common to references and products.
-func (s *Story) compoundKeys(d Dye, name, sets string) []any {
+func compoundKeys(d Dye, name, sets string) []any {
 	return []any{
 		"name", name, "title", d.Title, "sets", raw(sets), "charge", d.Charge, "steps", len(d.PKa), "pka", d.PKa,
-		"dpka_dt", d.DPKaDT[0], "ladder_nominal", d.Ladder, "clear_window", d.Clear[:], "range", d.Range[:],
-		"ionic_strength", 0.1, "u_ionic_rel", 0.01, "medium", d.Buffer, "temperature", 25.0, "target_u", 0.05,
+		"dpka_dt", slopeOf(d), "ladder_nominal", d.Ladder, "clear_window", d.Clear[:], "range", d.Range[:],
+		"ionic_strength", d.ionic(), "u_ionic_rel", 0.01, "medium", d.Buffer, "temperature", 25.0, "target_u", 0.05,
 		"path_mm", 10.0, "concentration", 21e-6,
 	}
+}
+
+// slopeOf is the temperature coefficient of the first constant.
+func slopeOf(d Dye) float64 {
+	if len(d.DPKaDT) == 0 {
+		return 0
+	}
+	return d.DPKaDT[0]
 }
 
 func (s *Story) instruments(w *tomlWriter) {

@@ -76,10 +76,7 @@ func (sc *Scenario) bottles(night int) []Buffer {
 func (sc *Scenario) electrode(night int) (Electrode, Calibration) {
 	cal := sc.calibrated(night)
 	rng := dice(sc.Seed, "calibration", cal)
-	name := sc.Design.Electrode
-	if name == "" {
-		name = "E-1"
-	}
+	name := sc.electrodeName()
 	e := Electrode{Name: name, E7MV: 2, SlopeAcid: 0.992, SlopeBase: 0.988}
 	e.E7MV += sc.Noise.Potential * rng.NormFloat64()
 	e.SlopeAcid *= 1 + sc.Noise.Slope*rng.NormFloat64()
@@ -179,10 +176,7 @@ func (sc *Scenario) one(night, slot int, d Dye) (*Set, error) {
 		c.Optics.Path = or1(c.Optics.Path) * p.PathMM / 10
 	}
 	s := Measure(p, c, rng)
-	s.Instrument, s.Night = sc.Design.Instrument, night
-	if s.Instrument == "" {
-		s.Instrument = "U1"
-	}
+	s.Instrument, s.Night = sc.instrument(), night
 	return s, nil
 }
 

@@ -7,6 +7,9 @@ import (
 	"time"
 
 	"pgregory.net/rapid"
+
+	"pkvigil/pipeline/naming"
+	"pkvigil/pipeline/settings"
 )
 
 func TestEveryCauseActs(t *testing.T) {
@@ -327,5 +330,43 @@ func TestScenarioExportsAndTruth(t *testing.T) {
 		if seen[key] != want {
 			t.Errorf("truth has %d of %s, expected %d", seen[key], key, want)
 		}
+	}
+}
+
+// The settings of a scenario are valid and sort its files.
+func TestScenarioSettings(t *testing.T) {
+	sc := &Scenario{Seed: 4, Design: Design{Dyes: []Dye{Dyes()["RI-C"], Violet("V2", []float64{4, 8}, 0), ThreeSolutions(Dyes()["PR"], 7.6, 8.0)}}, Noise: Quiet()}
+	set, err := settings.Read(sc.Settings("/data/room"), "room.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	rules, err := naming.Compile(set.Rules)
+	if err != nil {
+		t.Fatal(err)
+	}
+	sets, err := sc.Night(1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	names := map[string]bool{}
+	for _, s := range sets {
+		names[s.Name] = true
+	}
+	for _, st := range []Style{{}, {JCAMP: true}} {
+		deposits, err := sc.Export(1, st)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for _, d := range deposits {
+			m, err := rules.Match(d.Folder, d.Path)
+			if err != nil {
+				t.Errorf("%v", err)
+			} else if m.Role != naming.RoleCalibration && !names[m.Set] {
+				t.Errorf("%s belongs to %q", d.Path, m.Set)
+			}
+		}
+	}
+	if p := set.Compounds[2].Profile; p != "three-solution" || set.Compounds[1].Steps != 2 {
+		t.Errorf("profile %q, steps %d", p, set.Compounds[1].Steps)
 	}
 }

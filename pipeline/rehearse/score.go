@@ -43,7 +43,7 @@ type Delay struct {
 }
 
 // Score compares. Truths of expectation "nothing" count neither for nor
-// against. A case matches an episode when its resource is one of the
+// against, and a case that tells one is not a false one. A case matches an episode when its resource is one of the
 // episode's (any, if the episode names none), its cause or one of its further
 // candidates begins with an accepted class, and it was opened
 // between the episode's first night and two nights after its last.
@@ -55,10 +55,15 @@ func Score(truth []Truth, found Found) ScoreCard {
 	for _, f := range found.Files {
 		sc.files[f.File] = f.State
 	}
+	for _, expected := range []bool{true, false} {
+		for _, t := range truth {
+			if t.Kind == KindEpisode && (t.Expect != ExpectNothing) == expected {
+				sc.episode(t)
+			}
+		}
+	}
 	for _, t := range truth {
 		switch t.Kind {
-		case KindEpisode:
-			sc.episode(t)
 		case KindSet, KindFile:
 			sc.count(t, sc.seen(t))
 		case KindAbsence:
@@ -111,13 +116,14 @@ func (s *scorer) count(t Truth, met bool) {
 
 // episode looks for cases that name it.
 func (s *scorer) episode(t Truth) {
+	if t.Expect == ExpectNothing {
+		s.claim(t)
+		return
+	}
 	s.card.Episodes++
 	best := -1
 	for i, c := range s.found.Cases {
-		if c.Opened < t.From || c.Opened > t.To+2 || !fitsResource(t, c.Resource) {
-			continue
-		}
-		if !fitsCause(t, c.Cause) && !slices.ContainsFunc(c.Others, func(o string) bool { return fitsCause(t, o) }) {
+		if s.taken[i] || !fitsCase(t, c) {
 			continue
 		}
 		s.taken[i] = true
@@ -136,6 +142,22 @@ func (s *scorer) episode(t Truth) {
 		s.card.RightCause++
 	}
 	s.card.Delays = append(s.card.Delays, Delay{t.Key, t.Resource, t.From, c.Opened, c.Opened - t.From})
+}
+
+// claim marks the cases that tell a truth nobody asked for, and says whether there are any.
+func (s *scorer) claim(t Truth) bool {
+	found := false
+	for i, c := range s.found.Cases {
+		if !s.taken[i] && fitsCase(t, c) {
+			s.taken[i], found = true, true
+		}
+	}
+	return found
+}
+
+func fitsCase(t Truth, c FoundCase) bool {
+	return c.Opened >= t.From && c.Opened <= t.To+2 && fitsResource(t, c.Resource) &&
+		(fitsCause(t, c.Cause) || slices.ContainsFunc(c.Others, func(o string) bool { return fitsCause(t, o) }))
 }
 
 func fitsResource(t Truth, name string) bool {
@@ -161,7 +183,7 @@ func (s *scorer) seen(t Truth) bool {
 	case ExpectRevised:
 		return set.Revision > 1
 	case ExpectAsk:
-		return set.Asked
+		return s.claim(t) || set.Asked
 	case ExpectRefused, ExpectParked, ExpectTwin:
 		return s.files[t.File] == t.Expect
 	}

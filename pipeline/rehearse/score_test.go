@@ -43,6 +43,9 @@ func TestLiesCost(t *testing.T) {
 			func(c ScoreCard) bool { return c.MessagesPerEpisode == 2 }},
 		{"a case after the end", func(f *Found) { f.Cases[2].Opened = 55 },
 			func(c ScoreCard) bool { return c.EpisodesFound == 2 && c.Missed() == 1 }},
+		{"true things nobody asked for", func(f *Found) {
+			f.Cases = append(f.Cases, FoundCase{Cause: "electrode.ageing", Resource: "E-31", Opened: 22}, FoundCase{Cause: "reference.lot", Resource: "RC-12", Opened: 49})
+		}, func(c ScoreCard) bool { return c.FalselyAccused() == 0 && c.EpisodesFound == 3 }},
 		{"a good file refused", func(f *Found) {
 			f.Files = append(f.Files, FoundFile{"U1/n002/RI-A.open_s01.csv", ExpectRefused})
 		}, func(c ScoreCard) bool { return len(c.FalseFiles) == 1 }},
@@ -89,7 +92,7 @@ func perfect(truth []Truth) Found {
 	}
 	for _, t := range truth {
 		switch {
-		case t.Kind == KindEpisode:
+		case t.Kind == KindEpisode && t.Expect == ExpectCase:
 			f.Cases = append(f.Cases, FoundCase{Cause: t.Accept[0], Resource: t.Resource, Onset: t.From, Opened: t.From, Openings: 1})
 		case t.Kind == KindAbsence:
 			f.Absences = append(f.Absences, FoundAbsence{t.Key, t.Resource, t.Night})

@@ -72,7 +72,8 @@ func (m *nightMaker) tellSet(b Booking, set *Set, t trouble) {
 		m.tell(Truth{Key: "chem.impB", Kind: KindSet, Set: b.Key(), Resource: b.Lot, Size: 4, Unit: "%", Expect: ExpectHeld, Note: "second dye, pKa 0.8 higher, bands 10 nm to the blue"})
 	}
 	if b.Compound == "RI-C2" && b.Night == nightNewLot && b.Slot == "open" {
-		m.tell(Truth{Key: "ref.lotchange", Kind: KindSet, Set: b.Key(), Resource: "RI-C2", Size: -0.7, Unit: "%", Expect: ExpectAsk, Note: "new lot of a reference: amount and ratio differ, pKa does not"})
+		m.tell(Truth{Key: "ref.lotchange", Kind: KindSet, Set: b.Key(), Resource: b.Lot, Resources: []string{"RI-C2", "RI-C", "RC-11"},
+			Accept: []string{"reference.lot", "stock", "impurity.constant"}, From: nightNewLot, To: nightNewLot + 10, Size: -0.7, Unit: "%", Expect: ExpectAsk, Note: "new lot of a reference: amount and ratio differ, pKa does not"})
 	}
 }
 
