@@ -48,6 +48,7 @@ func LevenbergMarquardt(residual func(x, r []float64), m int, start []float64, o
 	}
 	out := &LMResult{Status: HitLimit, DOF: m - n}
 	out.Iterations, out.Status = l.run(opt.MaxIterations)
+	l.polish()
 	l.finish(out)
 	return out, nil
 }
@@ -120,6 +121,40 @@ func (l *lm) run(limit int) (int, Status) {
 		}
 	}
 	return limit, HitLimit
+}
+
+// polish takes undamped steps at the end. There the sum of squares is flat to
+// rounding and cannot judge a step, so the gradient does.
+func (l *lm) polish() {
+	for range 12 {
+		before := l.slope(l.j, l.r)
+		if pred, _ := l.step(0); math.IsNaN(pred) {
+			return
+		}
+		l.f(l.xt, l.rt)
+		rss := dot(l.rt, l.rt)
+		if !(rss <= l.rss*(1+1e-9)) || !l.jacobian(l.xt) || !(l.slope(l.jt, l.rt) < 0.5*before) {
+			return
+		}
+		l.x, l.xt, l.r, l.rt, l.j, l.jt, l.rss = l.xt, l.x, l.rt, l.r, l.jt, l.j, rss
+	}
+}
+
+// slope is the largest cosine between the residual and a column of the Jacobian.
+func (l *lm) slope(j, r []float64) float64 {
+	norm := math.Sqrt(dot(r, r))
+	worst := 0.0
+	for k := 0; k < l.n; k++ {
+		var g, s float64
+		for i := 0; i < l.m; i++ {
+			g += j[i*l.n+k] * r[i]
+			s += j[i*l.n+k] * j[i*l.n+k]
+		}
+		if norm > 0 && s > 0 {
+			worst = math.Max(worst, math.Abs(g)/(norm*math.Sqrt(s)))
+		}
+	}
+	return worst
 }
 
 // length is |D x|.
@@ -223,6 +258,9 @@ func (l *lm) differences(x []float64) {
 	copy(at, x)
 	for k := 0; k < l.n; k++ {
 		h := 1e-4 * math.Abs(x[k])
+		if l.d[k] > 0 { // a value near zero says nothing about its scale; its standard deviation does
+			h = math.Max(h, math.Min(1e-4, 1e-3*math.Sqrt(l.rss/float64(l.m))/l.d[k]))
+		}
 		if h == 0 {
 			h = 1e-4
 		}
@@ -323,17 +361,7 @@ func leastSquares(a, b []float64, m, n int, x []float64) bool {
 func (l *lm) finish(out *LMResult) {
 	m, n := l.m, l.n
 	out.X, out.RSS = append([]float64(nil), l.x...), l.rss
-	norm := math.Sqrt(l.rss)
-	for k := 0; k < n; k++ {
-		var g, s float64
-		for i := 0; i < m; i++ {
-			g += l.j[i*n+k] * l.r[i]
-			s += l.j[i*n+k] * l.j[i*n+k]
-		}
-		if norm > 0 && s > 0 {
-			out.Gradient = math.Max(out.Gradient, math.Abs(g)/(norm*math.Sqrt(s)))
-		}
-	}
+	out.Gradient = l.slope(l.j, l.r)
 	copy(l.a, l.j)
 	clear(l.b)
 	out.SD, out.Cov = make([]float64, n), make([]float64, n*n)
