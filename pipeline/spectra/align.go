@@ -101,6 +101,14 @@ func (p *preparation) displacement() (delta, sd []float64) {
 	a, cols := p.matrix()
 	m, w := len(p.rows), len(cols)
 	f := factorise(a, m, w, p.opt.Forms)
+	if k := f.clear(a, 3); k < f.k {
+		if k == 0 {
+			return nil, nil
+		}
+		// A colourless form adds no component; noise in its place would pass
+		// for displacements.
+		f = factorise(a, m, w, k)
+	}
 	q := f.rightBasis()
 	r := f.residual(a)
 	g := p.derivatives(f, cols)

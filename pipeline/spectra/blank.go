@@ -58,7 +58,7 @@ func (p *preparation) disagreement(values [][]float64) (worst, limit float64) {
 			continue
 		}
 		noise = math.Max(noise, thirdDifferenceSD(d))
-		for _, s := range smoothed(x, d, 4*medianStep(x)) {
+		for _, s := range smoothed(x, d, 10*medianStep(x)) {
 			worst = math.Max(worst, math.Abs(s))
 		}
 	}

@@ -141,6 +141,9 @@ func (p *preparation) scatter() {
 	m := len(p.rows)
 	size, sd := make([]float64, m), make([]float64, m)
 	p.scatterFit(cols, power, size, sd)
+	if !p.clearIsClear(cols, power) {
+		return
+	}
 	onset, count, largest := math.NaN(), 0, 0.0
 	low := 0
 	for i, r := range p.rows {
@@ -183,6 +186,30 @@ func (p *preparation) scatter() {
 		}
 	}
 	p.record("scatter.removed", "", power, "1", "The λ^-%.1f rise was subtracted from each scan.", power)
+}
+
+// clearIsClear says whether offset and rise describe the clear windows down to
+// the noise. Where they do not, the tail of a band reaches in.
+func (p *preparation) clearIsClear(cols []int, power float64) bool {
+	var tails []string
+	for i := range p.rows {
+		y := make([]float64, len(cols))
+		for k, j := range cols {
+			y[k] = p.rows[i].a[j]
+		}
+		sd := thirdDifferenceSD(y)
+		one := preparation{x: p.x, rows: p.rows[i : i+1]}
+		rest := one.scatterFit(cols, power, nil, nil)
+		// rest/sd^2 is chi square on n-2 degrees; the factor leaves room for noise that neighbours share
+		if n := float64(len(cols)); rest > 3*n*sd*sd {
+			tails = append(tails, p.rows[i].key)
+		}
+	}
+	if len(tails) == 0 {
+		return true
+	}
+	p.record("clear.absorbs", "", float64(len(tails)), "rungs", "The clear window is not clear in %s: something absorbs there.", list(tails))
+	return false
 }
 
 // scatterFit fits offset and rise to every rung in the clear columns; returns

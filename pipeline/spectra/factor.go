@@ -76,6 +76,24 @@ func (f factor) leverage(i int) float64 {
 	return h
 }
 
+// clear is the number of components whose singular value is above a multiple
+// of the largest that independent noise would give. The noise is that of the
+// rows' third differences.
+func (f factor) clear(a []float64, multiple float64) int {
+	sum := 0.0
+	for i := range f.m {
+		if sd := thirdDifferenceSD(a[i*f.w : (i+1)*f.w]); !math.IsNaN(sd) {
+			sum += sd * sd / float64(f.m)
+		}
+	}
+	edge := multiple * math.Sqrt(sum) * (math.Sqrt(float64(f.m)) + math.Sqrt(float64(f.w)))
+	k := 0
+	for k < f.k && f.s[k] > edge {
+		k++
+	}
+	return k
+}
+
 // columnSum is the sum of the entries of a left vector.
 func (f factor) columnSum(c int) float64 {
 	s := 0.0

@@ -235,6 +235,9 @@ func (p *preparation) amountFromOthers(i int, cols []int) float64 {
 	for k, j := range cols {
 		own[k] = p.rows[i].a[j]
 	}
+	if f.k < 2 || f.clear(others, 5) < f.k {
+		return math.NaN() // a form without colour leaves the measure undetermined
+	}
 	spread, amount, norm, left := 0.0, 0.0, 0.0, 0.0
 	for o := range m {
 		one := 0.0
@@ -245,9 +248,6 @@ func (p *preparation) amountFromOthers(i int, cols []int) float64 {
 	}
 	rest := slices.Clone(own)
 	for k := range f.k {
-		if f.s[k] <= 1e-9*f.s[0] {
-			return math.NaN()
-		}
 		score := 0.0
 		for j := range own {
 			score += own[j] * f.v[k*w+j]

@@ -92,8 +92,9 @@ func (p *preparation) noise() {
 	}
 }
 
-// components is the number of components that stand above independent noise
-// of standard deviation sd, at least the expected forms and at most two more.
+// noiseComponents takes the expected forms, and up to two components more that
+// stand above independent noise and run smoothly along the wavelengths: a
+// further dye or a displacement. One noisy scan is no component.
 func (p *preparation) noiseComponents(a []float64, m, w int) factor {
 	k := min(p.opt.Forms, m-1)
 	f := factorise(a, m, w, k)
@@ -108,9 +109,15 @@ func (p *preparation) noiseComponents(a []float64, m, w int) factor {
 		}
 	}
 	sd := math.Sqrt(sum / math.Max(n, 1e-9))
-	for k < min(p.opt.Forms+2, m-2) {
+	most := min(p.opt.Forms+2, m-2)
+	if most <= k {
+		return f
+	}
+	wide := factorise(a, m, w, most)
+	for k < most {
 		edge := sd * (math.Sqrt(float64(m-k)) + math.Sqrt(float64(w)))
-		if f.s[k] <= 1.1*edge {
+		v := wide.v[k*w : (k+1)*w]
+		if wide.s[k] <= 1.1*edge || dot(v[1:], v[:w-1]) < 0.8 {
 			break
 		}
 		k++
@@ -316,11 +323,10 @@ func (p *preparation) spikes() {
 	if m <= p.opt.Forms || w < 20 {
 		return
 	}
-	f := p.noiseComponents(a, m, w)
-	r := f.residual(a)
+	r := factorise(a, m, w, p.opt.Forms).residual(a)
 	hit := make(map[int]bool)
 	for i := range m {
-		row := r[i*w : (i+1)*w]
+		row := withoutTrend(r[i*w : (i+1)*w])
 		sd := thirdDifferenceSD(row)
 		if math.IsNaN(sd) || sd == 0 {
 			continue
@@ -338,6 +344,18 @@ func (p *preparation) spikes() {
 		p.use[cols[j]] = false
 	}
 	p.record("scan.spike", "", float64(len(hit)), "wavelengths", "%d wavelengths with an isolated spike in one scan take no part.", len(hit))
+}
+
+// withoutTrend takes the running median of 15 points off.
+func withoutTrend(y []float64) []float64 {
+	out := make([]float64, len(y))
+	var window [15]float64
+	for j := range y {
+		lo := max(0, min(j-7, len(y)-15))
+		n := copy(window[:], y[lo:min(lo+15, len(y))])
+		out[j] = y[j] - median(window[:n])
+	}
+	return out
 }
 
 // isolated says whether the run of large values about j is at most three long
