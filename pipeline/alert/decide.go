@@ -1,6 +1,9 @@
 package alert
 
-import "time"
+import (
+	"slices"
+	"time"
+)
 
 // A Presence says what is known of a condition now.
 type Presence int
@@ -15,7 +18,7 @@ const (
 // Why is the reason for speaking, or for not speaking.
 type Why string
 
-// The reasons for speaking.
+// The reasons for speaking. Those of cases are the texts of drift.Change.
 const (
 	WhyOpened    Why = "opened"
 	WhyCause     Why = "likeliest cause changed"
@@ -60,37 +63,93 @@ type Said struct {
 	At  time.Time
 }
 
-// Rules of pacing.
+// Rules of pacing; zero fields take the values stated.
 type Rules struct {
-	PerCase time.Duration // least pause between two mails on one key; 0: 12 h
-	PerDay  int           // mails in 24 h before the rest goes into one summary; 0: 6
+	PerCase time.Duration // least pause between two mails on one key; 12 h
+	PerDay  int           // mails in 24 h before the rest goes into one summary; 6
+}
+
+func (r Rules) filled() Rules {
+	if r.PerCase == 0 {
+		r.PerCase = 12 * time.Hour
+	}
+	if r.PerDay == 0 {
+		r.PerDay = 6
+	}
+	return r
 }
 
 // Decide says whether to speak of now, and why or why not. active lists what
-// else is present, for dependence. It is pure.
-func Decide(now State, last Said, active []State, at time.Time, rules Rules) (Why, bool) {
+// else is present, for dependence. It is pure: the same arguments give the same answer.
+func Decide(now State, last Said, active []State, at time.Time) (Why, bool) {
+	kind, _ := KindOf(now.Kind)
+	switch {
+	case now.Presence == Unknown:
+		return WhyNoData, false
+	case kind.Quiet:
+		return WhyQuiet, false
+	case len(now.Changes) > 0:
+		return ofCase(now.Changes), true
+	case now.Escalate && !now.Acknowledged && last.Why != WhyEscalated:
+		return WhyEscalated, true
+	case kind.Code == DriftCase: // a case speaks when it changes, and only then
+		return silent(now), false
+	case now.Presence == Present:
+		return whilePresent(kind, now, last, active, at)
+	}
+	return whenGone(kind, now, last, at)
+}
+
+func silent(now State) Why {
+	if now.Acknowledged {
+		return WhyKnown
+	}
+	return WhyNothingNew
+}
+
+// ofCase picks the change that a message about several is named after.
+func ofCase(changes []Why) Why {
+	for _, w := range []Why{WhyClosed, WhyOpened, WhyCause, WhyResource, WhyImpact, WhyEscalated} {
+		if slices.Contains(changes, w) {
+			return w
+		}
+	}
+	return changes[len(changes)-1]
+}
+
+func whilePresent(kind Kind, now State, last Said, active []State, at time.Time) (Why, bool) {
+	if moot(kind, now, active) {
+		return WhyMoot, false
+	}
+	if last.Why == "" || last.Why == WhyClosed {
+		if at.Sub(now.Since) < kind.Hold {
+			return WhyHolding, false
+		}
+		return WhyOpened, true
+	}
+	switch {
+	case now.Acknowledged:
+		return WhyKnown, false
+	case kind.Repeat > 0 && at.Sub(last.At) >= kind.Repeat:
+		return WhyReminder, true
+	}
 	return WhyNothingNew, false
 }
 
-// A Waiting message has been decided and not yet sent.
-type Waiting struct {
-	Key string
-	Why Why
-	At  time.Time // decided
+func whenGone(kind Kind, now State, last Said, at time.Time) (Why, bool) {
+	if last.Why == "" || last.Why == WhyClosed {
+		return WhyNothingNew, false
+	}
+	if at.Sub(now.Since) < kind.Clear {
+		return WhyHolding, false
+	}
+	return WhyClosed, true
 }
 
-// A Plan says what to do with waiting messages now.
-type Plan struct {
-	Send   []int     // indices to send singly
-	Digest []int     // indices to gather in one summary, sent now
-	Hold   []int     // indices that wait, with the reason in Why
-	Why    []Why     // parallel to Hold
-	Next   time.Time // when to look again; zero if nothing waits
-}
-
-// Pace applies the caps to waiting messages to one person or sink: one per
-// key in rules.PerCase, rules.PerDay in 24 hours, then one summary a day. sent lists
-// what went to the same place in the last 24 hours or more.
-func Pace(waiting []Waiting, sent []Waiting, at time.Time, rules Rules) Plan {
-	return Plan{}
+// moot reports whether something this kind depends on is present, for the same instrument or for all.
+func moot(kind Kind, now State, active []State) bool {
+	return slices.ContainsFunc(active, func(a State) bool {
+		same := a.Instrument == "" || now.Instrument == "" || a.Instrument == now.Instrument
+		return a.Presence == Present && same && slices.Contains(kind.Needs, a.Kind)
+	})
 }
