@@ -80,13 +80,24 @@ func (r *reader) findHeads(a *reading) {
 	}
 	if nearest == a.b.first-1 && nearest >= 0 {
 		cells := a.d.headCells(r.src.line(nearest))
-		if a.b.cols > 2 || headerKey(cells[0]) == 0 {
+		if a.b.cols > 2 || headerKey(cells[0]) == 0 || ordinate(quantity(cells[1])) {
 			a.header, a.heads = nearest, cells
 		}
 	}
 }
 
-func isAxis(cell string) bool { return quantity(cell) == qWavelength }
+// isAxis tells whether a head names the wavelength. One wavelength in the
+// head of a trace, such as "A 590 nm", does not.
+func isAxis(cell string) bool {
+	if quantity(cell) != qWavelength {
+		return false
+	}
+	if !strings.ContainsAny(cell, "0123456789") || perCM(cell) {
+		return true
+	}
+	words := slices.DeleteFunc(strings.Fields(fold(cell)), func(w string) bool { return oneOf(w, wordsNM) })
+	return quantity(strings.Join(words, " ")) == qWavelength
+}
 
 // axisLine tells whether cells are heads of which one names the wavelength.
 func (r *reader) axisLine(a *reading, i int, cells []string) bool {

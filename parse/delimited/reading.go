@@ -268,18 +268,15 @@ func (r *reader) broken(a *reading) error {
 		}
 	}
 	for _, o := range a.g.blocks {
-		switch bad := -1; {
-		case o.first > a.b.last && o.first-a.b.last <= 3 && (o.cols > 1 || o.first == next):
-			bad = next
-			if !r.unbroken(next, o.first) {
-				return r.damaged(bad, a.b.cols)
-			}
-		case o.last < a.b.first && o.cols == a.b.cols && a.b.first-o.last <= 3 && r.lay.FirstLine == 0:
-			bad = o.last + 1
-			if !r.unbroken(bad, a.b.first) {
-				return r.damaged(bad, a.b.cols)
-			}
-		case o.first != a.b.first && o.cols > 1 && 2*o.rows > a.b.rows && o.rows >= leastPoints && r.lay.FirstLine == 0:
+		after := o.first > a.b.last && o.first-a.b.last <= 3 && (o.cols > 1 || o.first == next)
+		if after && !r.unbroken(next, o.first) {
+			return r.damaged(next, a.b.cols)
+		}
+		before := o.last < a.b.first && o.cols == a.b.cols && a.b.first-o.last <= 3 && r.lay.FirstLine == 0
+		if before && !r.unbroken(o.last+1, a.b.first) {
+			return r.damaged(o.last+1, a.b.cols)
+		}
+		if o.first != a.b.first && o.cols > 1 && 2*o.rows > a.b.rows && o.rows >= leastPoints && r.lay.FirstLine == 0 {
 			return r.refuse(o.first+1, "", fmt.Sprintf("a second table of %d lines beside the one of %d lines from line %d", o.rows, a.b.rows, a.b.first+1),
 				"one table", "declare first_line in a layout, or export the tables one by one")
 		}
@@ -329,6 +326,9 @@ func (r *reader) truncated(a *reading) error {
 	c := a.b.cols - 1
 	last := a.g.kind(a.b, a.b.rows-1, c)
 	if last < parse.Exponential {
+		if cell := r.cell(a, a.b.rows-1, c); len(cell) < 2 { // nothing, or a lone sign that began a number
+			return r.cutShort(a.b.last, a.b.cols)
+		}
 		return nil
 	}
 	if last == parse.Exponential || commonest(a.g, a.b, c) == parse.Exponential {

@@ -128,7 +128,7 @@ func (r *reader) betterReason(err error) error {
 		}
 		for _, delim := range [...]byte{'\t', ';', ',', ' '} {
 			cells := dialect{delim: delim, point: '.'}.headCells(line)
-			if slices.ContainsFunc(cells, isAxisWord) {
+			if slices.ContainsFunc(cells, isAxis) && quantity(cells[0]) != qTime {
 				return err
 			}
 			if len(cells) < 2 || because != nil {
@@ -145,13 +145,8 @@ func (r *reader) betterReason(err error) error {
 	return err
 }
 
-// isAxisWord is isAxis, but a wavelength such as "590 nm" in the head of a
-// trace does not count.
-func isAxisWord(cell string) bool {
-	return isAxis(cell) && !strings.ContainsAny(cell, "0123456789")
-}
-
-// axis takes the wavelengths out of a column, in nanometres.
+// axisUnitOf finds the unit of a wavelength axis; stated is false where
+// nothing says that the column holds wavelengths at all.
 func (r *reader) axisUnitOf(a *reading, c int, f facts) (unit string, stated bool) {
 	for _, s := range [...]string{r.lay.Abscissa, axisUnit(a.head(c)), axisUnit(a.unit(c)), axisUnit(f.axis)} {
 		if s != "" {
