@@ -37,6 +37,10 @@ const trendLevel = 0.02
 // is taken as real and limits are widened for it.
 const correlationLevel = 0.05
 
+// wanders is the day-to-day correlation from which a baseline of some twenty nights is
+// no baseline: its effective number of nights is about two.
+const wanders = 0.8
+
 // Signature is a person's act: who, why, on which nights, and how many nights old
 // and new ran side by side.
 type Signature struct {
@@ -118,7 +122,7 @@ func LearnOn(scale Scale, values []Value, budgetSD float64) Baseline {
 	if budgetSD > 0 && finite(budgetSD) {
 		b.BudgetSD = scale.spreadToChart(scale.norm(r.Centre), budgetSD)
 	}
-	b.correlate(t, y)
+	b.correlate(y)
 	s := r.SD / math.Sqrt(spreadShrink(b.Phi, n))
 	b.spread(s, n)
 	b.refuse(t, y, s)
@@ -151,33 +155,38 @@ func countOutside(y []float64, centre, half float64) int {
 }
 
 // correlate tests the day-to-day correlation and records what follows from it.
-func (b *Baseline) correlate(t, y []float64) {
+func (b *Baseline) correlate(y []float64) {
 	n := len(y)
 	b.Lag1 = Lag1(y)
 	if n < YoungFrom {
 		b.Correlation = "Too few nights to test whether one night's value follows the last one's."
 		return
 	}
-	// A trend makes neighbours alike too; correlation is what remains beside the line.
-	l := fitLine(t, y)
-	e := make([]float64, n)
-	for i := range y {
-		e[i] = y[i] - l.at(t[i])
-	}
-	beside := Lag1(e)
 	r := b.Lag1
 	if lag1P(r, n) >= correlationLevel {
 		b.Correlation = fmt.Sprintf("Neighbouring nights are not noticeably alike (lag-1 correlation %.2f).", r)
-		return
-	}
-	if lag1P(beside, n) >= correlationLevel && TestTrend(t, y).SlopeP < trendLevel {
-		b.Correlation = fmt.Sprintf("Neighbouring nights are alike (lag-1 correlation %.2f) because the values follow a trend.", r)
 		return
 	}
 	b.Phi = max(0, unbiasedLag1(r, n))
 	b.Correlation = fmt.Sprintf("Neighbouring nights are alike (lag-1 correlation %.2f, %.2f without its small-sample bias). "+
 		"Individual limits and those of the weighted mean are widened from the long-term spread, because they are read in the characteristic's own unit; "+
 		"the cumulative sum and the run tests use the residuals of a first-order model, because no width makes dependent neighbours count as independent ones.", r, b.Phi)
+}
+
+// besideLine is the day-to-day correlation of what remains beside the straight line
+// through y, 0 where it is not significant: a trend makes neighbours alike too, and
+// must not be excused by the likeness it makes.
+func besideLine(t, y []float64) float64 {
+	l := fitLine(t, y)
+	e := make([]float64, len(y))
+	for i := range y {
+		e[i] = y[i] - l.at(t[i])
+	}
+	r := Lag1(e)
+	if lag1P(r, len(y)) >= correlationLevel {
+		return 0
+	}
+	return max(0, unbiasedLag1(r, len(y)))
 }
 
 // spread sets stage, spread and the uncertainty of the centre from the observed
@@ -220,18 +229,29 @@ func (b *Baseline) refuse(t, y []float64, s float64) {
 		return
 	}
 	// Correlation widens the chance variation of a slope; the tests are told so.
-	widen := math.Sqrt((1 + b.Phi) / (1 - b.Phi))
+	beside := besideLine(t, y)
+	widen := math.Sqrt((1 + beside) / (1 - beside))
 	kendallP, slopeP := b.Trend.P, b.Trend.SlopeP
-	if b.Phi > 0 {
+	if beside > 0 {
 		kendallP = 2 * below(-math.Abs(b.Trend.Z)/widen)
 		if b.Trend.SlopeSE > 0 {
 			slopeP = studentTwoSided(b.Trend.Slope/b.Trend.SlopeSE/widen, float64(n-2))
 		}
 	}
+	// Where the nights wander as well, the two cannot be told apart; the trend is said
+	// because it is what a person can look for.
+	plain := b.Trend.P < trendLevel && b.Trend.SlopeP < trendLevel
+	if b.Phi >= wanders && plain {
+		kendallP, slopeP = b.Trend.P, b.Trend.SlopeP
+	}
 	if kendallP < trendLevel && slopeP < trendLevel {
 		whole := b.Trend.Slope * (t[n-1] - t[0])
 		b.Refused = fmt.Sprintf("The %d baseline nights contain a trend: %+.3g from the first to the last, %.1f times their spread (chance %.2g). Learn from other nights, or remove the cause first.",
 			n, whole, math.Abs(whole)/s, max(kendallP, slopeP))
+		return
+	}
+	if b.Phi >= wanders {
+		b.Refused = fmt.Sprintf("The %d baseline nights wander: each resembles the one before so closely (correlation %.2f) that a drift could not be told from chance.", n, b.Phi)
 		return
 	}
 	if b.BudgetSD > 0 && s > 2*b.BudgetSD {

@@ -176,40 +176,54 @@ func LimitsFor(falseAlarmNights float64, nCharts int, rules Rules) (Rules, Desig
 	return rules, d, nil
 }
 
-// solveLimit finds the x in [low, high] at which the in-control run length is want;
-// run must grow with x. It works on the logarithm, where run lengths are nearly
-// straight, by the Illinois form of the rule of false position.
+// solveLimit finds the x from low to high at which the in-control run length is want;
+// run must grow with x. Brackets grow from low, so that run lengths beyond double
+// precision are never asked for where they can be avoided. It works on the logarithm,
+// where run lengths are nearly straight, by the Illinois form of the rule of false
+// position. Where the whole range falls short, high is returned.
 func solveLimit(want, low, high float64, run func(x float64) float64) float64 {
-	f := func(x float64) float64 { return math.Log(run(x)) - math.Log(want) }
-	a, b := low, high
-	fa, fb := f(a), f(b)
-	if fa >= 0 {
-		return a
-	}
-	if fb <= 0 || math.IsNaN(fb) {
-		return b
-	}
-	for range 100 {
-		if math.IsInf(fb, 0) || math.IsInf(fa, 0) {
-			m := (a + b) / 2
-			if fm := f(m); fm < 0 {
-				a, fa = m, fm
-			} else {
-				b, fb = m, fm
-			}
-			continue
+	f := func(x float64) float64 {
+		l := run(x)
+		if !(l > 0) || math.IsInf(l, 0) {
+			return math.Inf(1) // beyond double precision
 		}
-		m := (a*fb - b*fa) / (fb - fa)
+		return math.Log(l) - math.Log(want)
+	}
+	a, fa := low, f(low)
+	if fa >= 0 {
+		return low
+	}
+	step := (high - low) / 32
+	b := low + step
+	fb := f(b)
+	for fb < 0 {
+		if b >= high {
+			return high
+		}
+		step *= 1.5
+		a, fa = b, fb
+		b = min(high, b+step)
+		fb = f(b)
+	}
+	for range 200 {
+		m := (a + b) / 2
+		if !math.IsInf(fb, 0) {
+			m = (a*fb - b*fa) / (fb - fa)
+		}
 		fm := f(m)
 		if math.Abs(fm) < 1e-9 || math.Abs(b-a) < 1e-12 {
 			return m
 		}
-		if fm*fb < 0 {
-			a, fa = b, fb
-		} else {
-			fa /= 2
+		switch {
+		case math.IsInf(fb, 0) && fm < 0:
+			a, fa = m, fm
+		case math.IsInf(fb, 0):
+			b, fb = m, fm
+		case fm*fb < 0:
+			a, fa, b, fb = b, fb, m, fm
+		default:
+			b, fb, fa = m, fm, fa/2
 		}
-		b, fb = m, fm
 	}
 	return b
 }
@@ -254,7 +268,7 @@ func fitRange(r Rules, want float64) Rules {
 func fitEWMA(r Rules, want float64) Rules {
 	w := r.EWMAWeight
 	fixed := solveLimit(want, 0.5, 8, func(l float64) float64 { return EWMARunLength(w, l, 0, 1).Mean })
-	r.EWMAWidth = solveLimit(want, fixed, fixed+0.5, func(l float64) float64 { return EWMAExactRunLength(w, l, 0, 1).Mean })
+	r.EWMAWidth = solveLimit(want, fixed-1e-9, fixed+0.7, func(l float64) float64 { return EWMAExactRunLength(w, l, 0, 1).Mean })
 	return r
 }
 

@@ -94,7 +94,7 @@ func NewChart(b Baseline, r Rules) *Chart {
 // holds the figures).
 const (
 	slackForCentre = 0.5 // added to the slack of the cumulative sum
-	sideForCentre  = 0.5 // how far beyond the centre a value must lie to count for a side
+	sideForCentre  = 0.6 // how far beyond the centre a value must lie to count for a side
 	meanForCentre  = 0.5 // taken into the variance of the weighted mean
 )
 

@@ -19,9 +19,10 @@ type Robust struct {
 // deviation, pull values in to centre +- 1.5 sd, take their mean and 1.134 times
 // their standard deviation, and repeat until nothing changes.
 //
-// Where more than half of the values are equal the starting spread would be zero;
-// then the standard deviation starts the iteration (ISO 13528 leaves the choice of
-// another scale to the user). x is not changed. An empty x gives NaN, a single value
+// Where more than half of the values are equal the starting spread would be zero, or
+// the iteration would pull everything onto them; then the result is the median and the
+// ordinary standard deviation (ISO 13528 leaves the choice of another scale to the
+// user). x is not changed. An empty x gives NaN, a single value
 // a spread of zero.
 func AlgorithmA(x []float64) Robust {
 	n := len(x)
@@ -30,13 +31,13 @@ func AlgorithmA(x []float64) Robust {
 	}
 	centre := Median(x)
 	sd := 1.483 * medianDeviation(x, centre)
-	if sd == 0 && n > 1 {
-		sd = stat.StdDev(x, nil)
-	}
 	r := Robust{Centre: centre, SD: sd}
+	plain := Robust{Centre: centre, Converged: true}
+	if n > 1 {
+		plain.SD = stat.StdDev(x, nil)
+	}
 	if sd == 0 {
-		r.Converged = true
-		return r
+		return plain
 	}
 	clipped := make([]float64, n)
 	for r.Iterations = 1; r.Iterations <= 500; r.Iterations++ {
@@ -48,6 +49,9 @@ func AlgorithmA(x []float64) Robust {
 		s *= 1.134
 		still := math.Abs(m-centre) <= 1e-13*(math.Abs(m)+s) && math.Abs(s-sd) <= 1e-13*s
 		centre, sd = m, s
+		if sd < 1e-6*r.SD {
+			return plain
+		}
 		if still {
 			r.Converged = true
 			break

@@ -129,7 +129,17 @@ func CusumRunLength(k, h, shift, scale float64, headStart bool) RunLength {
 	upHead := OneSidedCusumRunLength(k, h, h/2, shift, scale).Mean
 	downHead := OneSidedCusumRunLength(k, h, h/2, -shift, scale).Mean
 	// (a d + b c - b d)/(b + d) with d possibly enormous: divide through by d.
-	r.Mean = (upHead + up*downHead/down - up) / (1 + up/down)
+	// A side that practically never signals, from either start, drops out.
+	ratio := func(a, b float64) float64 {
+		if math.IsInf(b, 0) {
+			return 1
+		}
+		return a / b
+	}
+	if up > down {
+		up, down, upHead, downHead = down, up, downHead, upHead
+	}
+	r.Mean = (upHead + up*(ratio(downHead, down)-1)) / (1 + up/down)
 	return r
 }
 

@@ -39,13 +39,15 @@ func (c *chain) run(shift float64) RunLength {
 		}
 		r := next / alive
 		// Measured on the probability of a flag, since that is what run lengths ask.
-		if math.Abs(r-ratio) <= 1e-9*(1-r)+5e-16 {
+		// (While no pattern can be complete yet the ratio stands still at one.)
+		if 1-r > 1e-14 && math.Abs(r-ratio) <= 1e-9*(1-r)+5e-16 {
 			still++
 		} else {
 			still = 0
 		}
 		alive, ratio = next, r
-		if still >= 8 {
+		// Longer than any pattern, lest the calm before one is possible passes for the end.
+		if still > longestRun {
 			// alive r^0, alive r^1, ... at values t+1, t+2, ...
 			q := 1 - r
 			mean += alive / q

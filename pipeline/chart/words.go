@@ -2,14 +2,20 @@ package chart
 
 import "fmt"
 
-// numeral writes small counts as words, as the rules are named.
+// numeral writes counts below a hundred as words, as the rules are named.
 func numeral(n int) string {
 	words := [...]string{"no", "one", "two", "three", "four", "five", "six", "seven", "eight", "nine", "ten",
-		"eleven", "twelve", "thirteen", "fourteen", "fifteen", "sixteen", "seventeen", "eighteen", "nineteen", "twenty"}
-	if n >= 0 && n < len(words) {
+		"eleven", "twelve", "thirteen", "fourteen", "fifteen", "sixteen", "seventeen", "eighteen", "nineteen"}
+	tens := [...]string{"twenty", "thirty", "forty", "fifty", "sixty", "seventy", "eighty", "ninety"}
+	switch {
+	case n < 0 || n > 99:
+		return fmt.Sprint(n)
+	case n < len(words):
 		return words[n]
+	case n%10 == 0:
+		return tens[n/10-2]
 	}
-	return fmt.Sprint(n)
+	return tens[n/10-2] + "-" + words[n%10]
 }
 
 // plural writes a count with its noun.
