@@ -101,7 +101,7 @@ func (p *preparation) displacement() (delta, sd []float64) {
 	a, cols := p.matrix()
 	m, w := len(p.rows), len(cols)
 	f := factorise(a, m, w, p.opt.Forms)
-	if k := f.clear(a, 3); k < f.k {
+	if k := f.clear(rowNoise(a, m, w), 3); k < f.k {
 		if k == 0 {
 			return nil, nil
 		}
@@ -157,6 +157,11 @@ func (p *preparation) displacement() (delta, sd []float64) {
 			sd[i] += vec.At(i, c) * vec.At(i, c) * variance / values[c]
 		}
 	}
+	for i := range m {
+		if !flanksAgree(r[i*w:(i+1)*w], g[i*w:(i+1)*w], strongest(g, m, w)) {
+			delta[i] = 0
+		}
+	}
 	// The zero of the displacements is the scan in the middle of them.
 	zero := median(append([]float64(nil), delta...))
 	for i := range m {
@@ -164,6 +169,35 @@ func (p *preparation) displacement() (delta, sd []float64) {
 		sd[i] = math.Sqrt(sd[i])
 	}
 	return delta, sd
+}
+
+// strongest is the largest norm of the rows of g.
+func strongest(g []float64, m, w int) float64 {
+	most := 0.0
+	for i := range m {
+		most = math.Max(most, math.Sqrt(dot(g[i*w:(i+1)*w], g[i*w:(i+1)*w])))
+	}
+	return most
+}
+
+// flanksAgree says whether rising and falling flanks give a displacement of one
+// sign. Another disturbance of a scan does not; a scan with a tenth of the
+// colour of the strongest says nothing.
+func flanksAgree(r, g []float64, most float64) bool {
+	var rise, fall [2]float64
+	for j := range g {
+		side := &rise
+		if g[j] < 0 {
+			side = &fall
+		}
+		side[0] -= r[j] * g[j]
+		side[1] += g[j] * g[j]
+	}
+	if math.Sqrt(rise[1]+fall[1]) < 0.1*most || rise[1] == 0 || fall[1] == 0 {
+		return false
+	}
+	a, b := rise[0]/rise[1], fall[0]/fall[1]
+	return a*b > 0 && math.Min(math.Abs(a), math.Abs(b)) > 0.3*math.Max(math.Abs(a), math.Abs(b))
 }
 
 // rightBasis is an orthonormal basis of the components and a constant.

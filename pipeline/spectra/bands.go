@@ -131,10 +131,12 @@ type localPoly struct {
 	ok  bool
 }
 
-// fitLocal fits a cubic (lower order if few points) to the values within half nm of x0.
+// fitLocal fits a cubic (lower order if few points) to the values within half nm
+// of x0, with weights that fall to zero at the edge of the window: as the window
+// follows a maximum, points come and go without a jump.
 func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
-	lo := sort.SearchFloat64s(x, x0-half)
-	hi := sort.SearchFloat64s(x, x0+half+1e-9)
+	lo := sort.SearchFloat64s(x, x0-1.25*half)
+	hi := sort.SearchFloat64s(x, x0+1.25*half)
 	// A sparse grid still needs five points.
 	for hi-lo < 5 && (lo > 0 || hi < len(x)) {
 		if lo > 0 && (hi >= len(x) || x0-x[lo-1] <= x[hi]-x0) {
@@ -156,6 +158,11 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 	if scale <= 0 {
 		return p
 	}
+	// On a sparse grid the edge lies beyond the outermost points, so that all count.
+	edge := 1.25 * half
+	if hi-lo <= 6 {
+		edge = 1.25 * scale
+	}
 	var nrm [4][4]float64
 	var rhs [4]float64
 	used := 0
@@ -165,10 +172,11 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 		}
 		used++
 		basis := powers((x[i] - x0) / scale)
+		weight := taper((x[i] - x0) / edge)
 		for a := range k {
-			rhs[a] += basis[a] * y[i]
+			rhs[a] += weight * basis[a] * y[i]
 			for b := range k {
-				nrm[a][b] += basis[a] * basis[b]
+				nrm[a][b] += weight * basis[a] * basis[b]
 			}
 		}
 	}
@@ -186,16 +194,17 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 	if sd == nil {
 		return p
 	}
-	// Ordinary least squares with its true covariance under the given noise.
+	// The weights are not those of the noise: the covariance is the sandwich.
 	var mid [4][4]float64
 	for i := lo; i < hi; i++ {
 		if math.IsNaN(y[i]) {
 			continue
 		}
+		weight := taper((x[i] - x0) / edge)
 		basis := powers((x[i] - x0) / scale)
 		for a := range k {
 			for b := range k {
-				mid[a][b] += basis[a] * basis[b] * sd[i] * sd[i]
+				mid[a][b] += weight * weight * basis[a] * basis[b] * sd[i] * sd[i]
 			}
 		}
 	}
@@ -211,6 +220,12 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 		}
 	}
 	return p
+}
+
+// taper is one at the centre and zero with its slope at one.
+func taper(t float64) float64 {
+	u := math.Max(0, 1-t*t)
+	return u * u
 }
 
 func powers(t float64) [4]float64 { return [4]float64{1, t, t * t, t * t * t} }

@@ -77,21 +77,25 @@ func (f factor) leverage(i int) float64 {
 }
 
 // clear is the number of components whose singular value is above a multiple
-// of the largest that independent noise would give. The noise is that of the
-// rows' third differences.
-func (f factor) clear(a []float64, multiple float64) int {
-	sum := 0.0
-	for i := range f.m {
-		if sd := thirdDifferenceSD(a[i*f.w : (i+1)*f.w]); !math.IsNaN(sd) {
-			sum += sd * sd / float64(f.m)
-		}
-	}
-	edge := multiple * math.Sqrt(sum) * (math.Sqrt(float64(f.m)) + math.Sqrt(float64(f.w)))
+// of the largest that independent noise of standard deviation sd would give.
+func (f factor) clear(sd, multiple float64) int {
+	edge := multiple * sd * (math.Sqrt(float64(f.m)) + math.Sqrt(float64(f.w)))
 	k := 0
 	for k < f.k && f.s[k] > edge {
 		k++
 	}
 	return k
+}
+
+// rowNoise is the root mean square of the rows' noise from third differences.
+func rowNoise(a []float64, m, w int) float64 {
+	sum := 0.0
+	for i := range m {
+		if sd := thirdDifferenceSD(a[i*w : (i+1)*w]); !math.IsNaN(sd) {
+			sum += sd * sd / float64(m)
+		}
+	}
+	return math.Sqrt(sum)
 }
 
 // columnSum is the sum of the entries of a left vector.

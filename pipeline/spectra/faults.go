@@ -191,9 +191,19 @@ func (p *preparation) amounts() {
 	if len(cols) < fewestColumns {
 		return
 	}
+	all := make([]float64, 0, m*len(cols))
+	for i := range p.rows {
+		for _, j := range cols {
+			all = append(all, p.rows[i].a[j])
+		}
+	}
+	sd := rowNoise(all, m, len(cols))
+	others := make([]float64, 0, len(all))
 	amount := make([]float64, m)
 	for i := range p.rows {
-		amount[i] = p.amountFromOthers(i, cols)
+		w := len(cols)
+		others = append(append(others[:0], all[:i*w]...), all[(i+1)*w:]...)
+		amount[i] = amountFromOthers(all[i*w:(i+1)*w], others, min(p.opt.Forms, m-1), sd)
 	}
 	p.drop("scan.path", func(i int, r *row) string {
 		f := amount[i]
@@ -216,27 +226,16 @@ func pathGuess(f float64) string {
 	return "amount of dye or path is off."
 }
 
-// amountFromOthers is the amount of rung i relative to the others: the linear
-// measure of a spectrum that gives one for all of them, read on rung i. NaN
-// when the others do not agree on one, or rung i has another shape.
-func (p *preparation) amountFromOthers(i int, cols []int) float64 {
-	others := make([]float64, 0, len(cols)*(len(p.rows)-1))
-	for o := range p.rows {
-		if o == i {
-			continue
-		}
-		for _, j := range cols {
-			others = append(others, p.rows[o].a[j])
-		}
-	}
-	m, w := len(p.rows)-1, len(cols)
-	f := factorise(others, m, w, min(p.opt.Forms, m))
-	own := make([]float64, w)
-	for k, j := range cols {
-		own[k] = p.rows[i].a[j]
-	}
-	if f.k < 2 || f.clear(others, 5) < f.k {
-		return math.NaN() // a form without colour leaves the measure undetermined
+// amountFromOthers is the amount of one scan relative to the others: the linear
+// measure of a spectrum that gives one for all of them, read on this scan. NaN
+// when noise sd leaves the measure undetermined (a form without colour), when
+// the others do not agree on one, or when the scan has another shape.
+func amountFromOthers(own, others []float64, forms int, sd float64) float64 {
+	w := len(own)
+	m := len(others) / w
+	f := factorise(others, m, w, forms)
+	if f.k < 2 || f.clear(sd, 5) < f.k {
+		return math.NaN()
 	}
 	spread, amount, norm, left := 0.0, 0.0, 0.0, 0.0
 	for o := range m {

@@ -113,6 +113,9 @@ func (p *preparation) noiseComponents(a []float64, m, w int) factor {
 	if most <= k {
 		return f
 	}
+	if f.s[k] <= 1.1*sd*(math.Sqrt(float64(m-k))+math.Sqrt(float64(w))) {
+		return f
+	}
 	wide := factorise(a, m, w, most)
 	for k < most {
 		edge := sd * (math.Sqrt(float64(m-k)) + math.Sqrt(float64(w)))
@@ -326,11 +329,12 @@ func (p *preparation) spikes() {
 	r := factorise(a, m, w, p.opt.Forms).residual(a)
 	hit := make(map[int]bool)
 	for i := range m {
-		row := withoutTrend(r[i*w : (i+1)*w])
+		row := r[i*w : (i+1)*w]
 		sd := thirdDifferenceSD(row)
-		if math.IsNaN(sd) || sd == 0 {
+		if math.IsNaN(sd) || sd == 0 || largest(row) < 7*sd {
 			continue
 		}
+		row = withoutTrend(row)
 		for j := range row {
 			if math.Abs(row[j]) > 8*sd && isolated(row, j, 4*sd) {
 				hit[j] = true
@@ -344,6 +348,14 @@ func (p *preparation) spikes() {
 		p.use[cols[j]] = false
 	}
 	p.record("scan.spike", "", float64(len(hit)), "wavelengths", "%d wavelengths with an isolated spike in one scan take no part.", len(hit))
+}
+
+func largest(row []float64) float64 {
+	most := 0.0
+	for _, v := range row {
+		most = math.Max(most, math.Abs(v))
+	}
+	return most
 }
 
 // withoutTrend takes the running median of 15 points off.
