@@ -181,7 +181,7 @@ func dateLike(cell []byte) bool {
 			return true
 		}
 	}
-	return bytes.Count(cell, []byte{'.'}) == 2 || bytes.Count(cell, []byte{'-'}) == 2 || bytes.Count(cell, []byte{'/'}) == 2 || bytes.ContainsRune(cell, ':')
+	return bytes.Count(cell, []byte{'.'}) == 2 && !bytes.Contains(cell, []byte("..")) || bytes.Count(cell, []byte{'-'}) == 2 || bytes.Count(cell, []byte{'/'}) == 2 || bytes.ContainsRune(cell, ':')
 }
 
 // phExtras reads the other columns of a row.
@@ -285,23 +285,20 @@ func (r *reader) singlePH() (*parse.Content, error) {
 			d.delim = delim
 		}
 	}
-	bare, lines := 0, 0
+	bare := 0
 	for i := range min(len(r.src.spans), 200) {
 		line := r.src.line(i)
 		if blank(line) {
 			continue
 		}
-		lines++
+		if v, _, ok := number(strings.TrimSpace(string(line))); ok {
+			bare++
+			f.ph = v
+			continue
+		}
 		e := entryOf(d, line, i+1)
-		if e.key == "" && !e.marker {
-			word := strings.TrimSpace(e.value)
-			if rest, ok := cutPH(word); ok {
-				e.key, e.value = "pH", rest
-			} else if v, _, ok := number(word); ok && len(e.cells) == 0 {
-				bare++
-				f.ph = v
-				continue
-			}
+		if rest, ok := cutPH(e.value); ok && e.key == "" {
+			e.key, e.value = "pH", rest
 		}
 		if headerKey(e.key) == keyPH && !math.IsNaN(f.ph) {
 			return nil, r.refuse(i+1, "pH", "a second pH", "one reading, or a table with heads", "name the columns, for instance rung,pH")
@@ -312,7 +309,7 @@ func (r *reader) singlePH() (*parse.Content, error) {
 		r.learn(&f, d.point, i+1, e.key, e.value)
 	}
 	r.settle(&f)
-	if bare > 1 || bare == 1 && lines > 1 && math.IsNaN(f.mv) && lines > 12 {
+	if bare > 1 {
 		return nil, r.refuse(0, "", fmt.Sprintf("%d numbers without heads", bare), "one reading, or a table with heads", "name the columns, for instance rung,pH")
 	}
 	if math.IsNaN(f.ph) {
