@@ -38,6 +38,7 @@ const (
 	nightRefill      = 22 // it is refilled and calibrated, and drifts faster
 	nightUnmounted   = 24 // share of U2 away
 	nightReplaced    = 28 // electrode E-35 instead of E-31
+	nightTidied      = 31 // an old set is deleted from the share
 	nightLamp        = 34 // new lamp in U1, scale off
 	nightRealigned   = 37 // wavelength scale adjusted
 	nightClock       = 41 // clocks go back

@@ -69,7 +69,9 @@ const (
 	Sawtooth Shape = "sawtooth" // Size per night since the onset or the last calibration, whichever is later
 )
 
-// A Cause is one disturbance: what, of which thing, when, how much.
+// A Cause is one disturbance: what, of which thing, when, how much. Buffer
+// causes act through calibrations made while they last; offset and slope of an
+// electrode are errors until the next calibration, which takes them out.
 type Cause struct {
 	Kind     CauseKind
 	Resource string  // the thing that carries it; "" reaches every set

@@ -16,7 +16,6 @@ const (
 	DatabaseAway Act = "database-away" // the database does not answer from now on
 	DatabaseBack Act = "database-back" // it answers again
 	Sign         Act = "sign"          // a person decides something
-	Settle       Act = "settle"        // nothing happens; the replay may let the program catch up before going on
 )
 
 // A Deposit is one thing that happens in the laboratory, at a moment. The
@@ -35,10 +34,17 @@ type Deposit struct {
 }
 
 // A Signature is a scripted decision of a named person, as given to
-// `pkvigil sign` or `pkvigil adopt`.
+// `pkvigil sign` or `pkvigil adopt`. Verbs and their objects:
+//
+//	release      "night:2026-09-14": every result of that night that stands
+//	baseline     "U1/*", "U2/*": the baselines of an instrument; "RI-C2": of a reference
+//	acknowledge  "E-31", "U1", "CB-207": the open case on that resource
+//	accept       "CB-207": the correction proposed for that bottle; "U1/CR-1880.n055": the exchange proposed for that set
+//	confirm      "CB-207": results proposed as unaffected by the case on that resource
+//	adopt        a set key, with File and Rung: a parked file belongs to that set
 type Signature struct {
-	Verb    string // "acknowledge", "baseline", "accept", "lift", "confirm", "release", "adopt"
-	Object  string // what it is about; see the constants of Verb in the story: a set key with "*" allowed, a resource, "night:41"
+	Verb    string
+	Object  string
 	File    string // adopt: folder/path of the parked file
 	Rung    string // adopt: the rung it is, "" if it is no scan
 	As      string // who

@@ -12,6 +12,9 @@ func expectations() map[string]string {
 		"name.phrows": ExpectWaiting, "name.missing": ExpectWaiting, "ph.mV": ExpectHeld,
 		"ph.junction": ExpectHeld, "chem.nolimits": ExpectHeld, "chem.mixedI": ExpectNothing,
 		"ph.twoelec": ExpectNothing, "scan.step": ExpectNothing, "file.smoothed": ExpectNoted,
+		"scan.platerow": ExpectNoted, "scan.fade": ExpectNothing, "scan.evap": ExpectNothing, "scan.warmup": ExpectNothing,
+		"scan.fringe": ExpectNothing, "chem.none": ExpectHeld, "chem.thermo": ExpectHeld, "chem.complex": ExpectHeld,
+		"chem.slow": ExpectNoted, "ph.atc": ExpectNothing, "name.blankdye": ExpectNothing,
 
 		"file.cut": ExpectRefused, "file.empty": ExpectRefused, "file.comma": ExpectNothing,
 		"file.encoding": ExpectNothing, "file.sentinel": ExpectNothing, "file.otherkind": ExpectRefused,

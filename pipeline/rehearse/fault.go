@@ -22,7 +22,7 @@ type faultFunc func(s *Set, f Fault, rng *rand.Rand)
 // faults maps keys of the failure catalogue to what they do to a set in
 // memory. Faults of files are in spoil.go.
 func faultTable() map[string]faultFunc {
-	return map[string]faultFunc{
+	table := map[string]faultFunc{
 		"scan.bubble":      bubble,
 		"scan.open":        func(s *Set, f Fault, r *rand.Rand) { level(s, f.Rung, 0, 0.02, r) },
 		"scan.blocked":     func(s *Set, f Fault, r *rand.Rand) { level(s, f.Rung, 3.5, 0.2, r) },
@@ -52,6 +52,10 @@ func faultTable() map[string]faultFunc {
 		"file.coarse":      func(s *Set, f Fault, _ *rand.Rand) { decimals(s, int(size(f, 2))) },
 		"file.smoothed":    smoothed,
 	}
+	for key, f := range solutionFaults() {
+		table[key] = f
+	}
+	return table
 }
 
 // FaultKeys lists the faults that Spoil knows, in order of the alphabet.

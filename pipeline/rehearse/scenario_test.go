@@ -58,7 +58,7 @@ func TestEveryCauseActs(t *testing.T) {
 func flat(s *Set) []float64 {
 	out := slices.Clone(s.Blank.Absorbance)
 	for _, r := range s.Rungs {
-		out = append(append(out, r.Scan.Absorbance...), r.Reading.PH, r.Reading.TemperatureC)
+		out = append(append(out, r.Scan.Absorbance...), r.Reading.PH, r.Reading.TemperatureC, r.Scan.TemperatureC)
 	}
 	return out
 }
@@ -69,7 +69,9 @@ func calibrationDiffers(a, b *Scenario) bool {
 
 func TestEveryFaultChangesTheSet(t *testing.T) {
 	for _, key := range FaultKeys() {
-		sc := Scenario{Seed: 5, Design: Design{Dyes: []Dye{Dyes()["PR"]}}, Noise: Quiet()}
+		d := Dyes()["PR"]
+		d.Ladder = EvenLadder(d.PKa, -2, 3.8, 12) // far enough up for what happens above pH 11 only
+		sc := Scenario{Seed: 5, Design: Design{Dyes: []Dye{d}}, Noise: Quiet(), Causes: []Cause{{Kind: RoomTemperature, Size: 0.6}}}
 		clean, err := sc.Night(1)
 		if err != nil {
 			t.Fatal(err)
@@ -368,5 +370,23 @@ func TestScenarioSettings(t *testing.T) {
 	}
 	if p := set.Compounds[2].Profile; p != "three-solution" || set.Compounds[1].Steps != 2 {
 		t.Errorf("profile %q, steps %d", p, set.Compounds[1].Steps)
+	}
+}
+
+// Interchanged buffers imply an impossible slope; exchanged tables move both
+// sets by the distance of their ladders, in opposite directions.
+func TestExchangedThings(t *testing.T) {
+	sc := &Scenario{Seed: 3, Design: Design{Dyes: []Dye{Dyes()["PR"], Dyes()["CR"]}}, Noise: Silent()}
+	if c := SwapBuffers(sc.Calibration(1)); c.SegmentSlope(0) > 0 && c.SegmentSlope(1) > 0 {
+		t.Errorf("slopes %.2f and %.2f after an interchange", c.SegmentSlope(0), c.SegmentSlope(1))
+	}
+	sets, err := sc.Night(1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	ExchangeTables(sets[0], sets[1])
+	a, b := plainPKa(sets[0], 8.2)-7.8, plainPKa(sets[1], 7.8)-8.2
+	if math.Abs(a-0.4) > 0.005 || math.Abs(b+0.4) > 0.005 {
+		t.Errorf("pKa moved by %+.3f and %+.3f, expected +0.4 and -0.4", a, b)
 	}
 }

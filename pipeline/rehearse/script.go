@@ -37,6 +37,8 @@ func (m *nightMaker) script() {
 		m.sign(at(8, 50), Signature{Verb: "acknowledge", Object: "E-31", As: manager, Because: "electrode to be refilled and calibrated on Monday, new one ordered"})
 	case 20:
 		m.sign(at(8, 40), Signature{Verb: "baseline", Object: instTwo + "/*", As: metrologist, Because: "twenty nights, U2 undisturbed"})
+	case nightTidied:
+		m.tidied()
 	case nightLamp:
 		m.sign(at(8, 45), Signature{Verb: "acknowledge", Object: instOne, As: metrologist, Because: "scale to be adjusted, pKa not concerned"})
 	case nightBadBuffer:
@@ -115,4 +117,20 @@ func (m *nightMaker) tellTrouble(b Booking, set *Set, t trouble) {
 		truth.Note = "rung " + rungKey(t.rung+1)
 	}
 	m.tell(truth)
+}
+
+// tidied: somebody deletes an old set from the export folder to make room. Its
+// files were taken long before; nothing may be lost and nothing inferred.
+func (m *nightMaker) tidied() {
+	s := m.story
+	for _, b := range s.Bookings(2) {
+		if b.Reference || b.Instrument != instOne || s.troubleOf(b, false).key != "" {
+			continue
+		}
+		for i, f := range s.exportsOf(s.Set(b)) {
+			m.add(Deposit{At: s.at(m.night, 10, 0).Add(time.Duration(i) * time.Second), Act: Remove, Folder: b.Instrument, Path: f.Path, Note: "deleted by hand"})
+		}
+		m.tell(Truth{Key: "file.vanished", Kind: KindAbsence, Resource: b.Instrument, Set: b.Key(), Expect: ExpectNothing, Note: "files of a computed set deleted by hand"})
+		return
+	}
 }
