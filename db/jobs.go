@@ -95,5 +95,27 @@ func (s *Store) SetsWithCalibrations(ctx context.Context, q Querier, calibration
 	}
 	return s.ids(ctx, q, `
 		SELECT DISTINCT r.set_id FROM pkvigil.result r JOIN pkvigil.standing st ON st.result_id = r.id
-		WHERE r.calibration_id = ANY($1) AND st.is_current ORDER BY 1`, ids)
+		WHERE r.calibration_id = ANY($1) AND st.current ORDER BY 1`, ids)
+}
+
+// FilesStored counts the revisions of files that are stored.
+func (s *Store) FilesStored(ctx context.Context) (int, error) {
+	var n int
+	if err := s.pool.QueryRow(ctx, `SELECT count(*) FROM pkvigil.file`).Scan(&n); err != nil {
+		return 0, fmt.Errorf("counting files: %w", safe(err))
+	}
+	return n, nil
+}
+
+// EverWaited gives the sets that were waiting for something at some time.
+func (s *Store) EverWaited(ctx context.Context) (map[int64]bool, error) {
+	ids, err := s.ids(ctx, nil, `SELECT DISTINCT set_id FROM pkvigil.set_state WHERE state = 'waiting'`)
+	if err != nil {
+		return nil, err
+	}
+	out := make(map[int64]bool, len(ids))
+	for _, id := range ids {
+		out[id] = true
+	}
+	return out, nil
 }

@@ -4,6 +4,7 @@ import (
 	"context"
 	"encoding/json"
 	"fmt"
+	"slices"
 	"time"
 
 	"github.com/jackc/pgx/v5"
@@ -152,7 +153,7 @@ func (s *Store) LoadSet(ctx context.Context, setID int64) (*SetData, error) {
 	var d *SetData
 	err := pgx.BeginTxFunc(ctx, s.pool, pgx.TxOptions{IsoLevel: pgx.RepeatableRead, AccessMode: pgx.ReadOnly}, func(tx pgx.Tx) error {
 		var err error
-		d, err = s.loadSet(ctx, tx, setID)
+		d, err = s.loadSet(ctx, tx, setID, nil)
 		return err
 	})
 	if err != nil {
@@ -161,7 +162,26 @@ func (s *Store) LoadSet(ctx context.Context, setID int64) (*SetData, error) {
 	return d, nil
 }
 
-func (s *Store) loadSet(ctx context.Context, tx pgx.Tx, setID int64) (*SetData, error) {
+// LoadMembers is LoadSet with the members of the given ids in place of the
+// active ones: what an earlier result of the set was computed from.
+func (s *Store) LoadMembers(ctx context.Context, setID int64, members []int64) (*SetData, error) {
+	var d *SetData
+	err := pgx.BeginTxFunc(ctx, s.pool, pgx.TxOptions{IsoLevel: pgx.RepeatableRead, AccessMode: pgx.ReadOnly}, func(tx pgx.Tx) error {
+		var err error
+		d, err = s.loadSet(ctx, tx, setID, func(m *Member) bool { return slices.Contains(members, m.ID) })
+		return err
+	})
+	if err != nil {
+		return nil, fmt.Errorf("loading set %d: %w", setID, err)
+	}
+	return d, nil
+}
+
+// loadSet reads the members that want picks; nil picks the active ones.
+func (s *Store) loadSet(ctx context.Context, tx pgx.Tx, setID int64, want func(*Member) bool) (*SetData, error) {
+	if want == nil {
+		want = func(m *Member) bool { return m.Active }
+	}
 	set, err := s.SetByID(ctx, tx, setID)
 	if err != nil {
 		return nil, err
@@ -181,7 +201,7 @@ func (s *Store) loadSet(ctx context.Context, tx pgx.Tx, setID int64) (*SetData, 
 	var tables []int64
 	seen := map[int64]bool{}
 	for _, m := range all {
-		if !m.Active {
+		if !want(&m.Member) {
 			d.Inactive = append(d.Inactive, m.Member)
 			continue
 		}
@@ -218,11 +238,11 @@ func scanLoaded(r pgx.Rows) (LoadedMember, error) {
 	return m, err
 }
 
-// scansOfSet reads the scans of active members. Scans on one grid share one
+// scansOfSet reads the scans of all members. Scans on one grid share one
 // slice of wavelengths, which nobody may change.
 func (s *Store) scansOfSet(ctx context.Context, tx pgx.Tx, setID int64) (map[int64]*ScanRow, error) {
 	rows, err := tx.Query(ctx, "select "+scanColumns+` from member m join scan c on c.id = m.scan_id join grid g on g.sha256 = c.grid
-		where m.set_id = $1 and m.active`, setID)
+		where m.set_id = $1`, setID)
 	all, err := collect(rows, err, "reading scans", scanScan)
 	if err != nil {
 		return nil, err

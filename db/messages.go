@@ -67,11 +67,6 @@ func (s *Store) DeliveryByID(ctx context.Context, q Querier, id int64) (*Deliver
 	return d, err
 }
 
-// DeliveriesOf gives the deliveries of a message.
-func (s *Store) DeliveriesOf(ctx context.Context, q Querier, messageID int64) ([]Delivery, error) {
-	return s.deliveries(ctx, q, `where d.message_id = $1 order by d.id`, messageID)
-}
-
 // FailedDeliveries gives deliveries given up since a moment, oldest first.
 func (s *Store) FailedDeliveries(ctx context.Context, q Querier, since time.Time) ([]Delivery, error) {
 	return s.deliveries(ctx, q, `where d.state = 'failed' and d.last_at >= $1 order by d.id`, since)
