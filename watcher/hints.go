@@ -38,7 +38,7 @@ func (h *hints) follow(r *root) {
 		}
 		rh = &rootHints{w: w, dirs: make(chan []string, 1)}
 		h.roots[r] = rh
-		go rh.watch(r)
+		go h.watch(r, rh)
 		go h.forward(w)
 	}
 	select { // replace a list that nobody has fetched yet
@@ -61,33 +61,45 @@ func (h *hints) forward(w *fsnotify.Watcher) {
 				return
 			}
 		}
-		select {
-		case h.wake <- struct{}{}:
-		default: // one is waiting already
-		}
+		h.call()
 	}
 }
 
-// watch keeps the watched directories equal to the newest list.
-func (rh *rootHints) watch(r *root) {
+// call leaves a wake-up unless one is waiting already.
+func (h *hints) call() {
+	select {
+	case h.wake <- struct{}{}:
+	default:
+	}
+}
+
+// watch keeps the watched directories equal to the newest list. What came into
+// a directory after it was listed and before it was watched caused no event,
+// so a directory that is newly watched calls for one more look.
+func (h *hints) watch(r *root, rh *rootHints) {
 	for dirs := range rh.dirs {
-		watched := rh.w.WatchList()
-		wanted := make(map[string]bool, len(dirs))
-		all := true
+		before := map[string]bool{}
+		for _, d := range rh.w.WatchList() {
+			before[d] = true
+		}
+		all, fresh := true, false
 		for _, d := range dirs {
-			// A directory that was removed and made again lost its watch without
-			// leaving the list; adding again is cheap and right in every case.
-			wanted[d] = true
+			// A directory that was removed and made again may still stand in the
+			// list without its watch; adding again is cheap and right in every case.
 			if err := rh.w.Add(d); err != nil {
 				all = false
+				continue
 			}
+			fresh = fresh || !before[d]
+			delete(before, d)
 		}
-		for _, d := range watched {
-			if !wanted[d] {
-				_ = rh.w.Remove(d) // it is gone already, or no longer of interest
-			}
+		for d := range before {
+			_ = rh.w.Remove(d) // it is gone already, or no longer of interest
 		}
 		r.events.Store(all)
+		if fresh {
+			h.call()
+		}
 	}
 }
 

@@ -73,25 +73,33 @@ func (o RunOptions) wait(rep Report, took time.Duration) time.Duration {
 
 // pause waits for the timer or for the end of a burst of wake-ups, never less
 // than duty allows. It returns false when ctx ends.
-func pause(ctx context.Context, took, wait time.Duration, wakes ...<-chan struct{}) bool {
-	began := time.Now()
+func pause(ctx context.Context, took, wait time.Duration, hints, others <-chan struct{}) bool {
+	soonest := time.Now().Add(duty * took)
 	timer := time.NewTimer(wait)
 	defer timer.Stop()
+	end := time.Now().Add(wait)
 	for woken := false; ; {
 		select {
 		case <-ctx.Done():
 			return false
 		case <-timer.C:
 			return true
-		case <-wakes[0]:
-		case <-wakes[1]:
+		case <-hints:
+		case <-others:
 		}
-		if !woken {
-			woken = true
-			wait = min(wait, max(longest, duty*took))
+		now := time.Now()
+		if latest := now.Add(longest); !woken && latest.Before(end) {
+			end = latest
 		}
+		woken = true
 		// Each further event puts the look off by the quiet time, up to the longest.
-		rest := min(max(quiet, duty*took-time.Since(began)), wait-time.Since(began))
-		timer.Reset(max(rest, 0))
+		due := now.Add(quiet)
+		if due.After(end) {
+			due = end
+		}
+		if due.Before(soonest) {
+			due = soonest
+		}
+		timer.Reset(due.Sub(now))
 	}
 }
