@@ -142,7 +142,7 @@ func TestRefusals(t *testing.T) {
 }
 
 func TestCorrelationIsTakenIntoAccount(t *testing.T) {
-	e := noise(3, 60)
+	e := noise(5, 60)
 	x := make([]float64, 60)
 	for i := range x {
 		x[i] = e[i] * math.Sqrt(1-0.25)

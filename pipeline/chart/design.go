@@ -28,6 +28,34 @@ type Design struct {
 	AtLeast float64
 }
 
+// Lines writes the design as a plain table, one line per chart, for a terminal.
+func (d Design) Lines() []string {
+	head := fmt.Sprintf("%-45s %12s", "rule", "in control")
+	for _, s := range d.Shifts {
+		head += fmt.Sprintf(" %9s", fmt.Sprintf("%+.3g sd", s))
+	}
+	lines := []string{head}
+	for _, r := range d.Rows {
+		line := fmt.Sprintf("%-45s %12.0f", r.Rule, r.InControl)
+		for _, l := range r.Shifted {
+			if math.IsNaN(l.Mean) {
+				line += fmt.Sprintf(" %9s", "-")
+				continue
+			}
+			line += fmt.Sprintf(" %9.1f", l.Mean)
+		}
+		lines = append(lines, line)
+	}
+	lines = append(lines, fmt.Sprintf("All rules of one chart together: at least %.0f values between false flags.", d.AtLeast))
+	if d.FalseAlarmNights > 0 {
+		lines = append(lines, fmt.Sprintf("Asked for: one in %.4g nights over %s, so %.0f values for each chart.", d.FalseAlarmNights, plural(d.Charts, "chart"), d.PerChart))
+	}
+	for _, l := range d.LeftOut {
+		lines = append(lines, "Not kept: "+l+".")
+	}
+	return lines
+}
+
 // designShifts are the steps, in standard deviations, that a design is stated for.
 func designShifts() []float64 { return []float64{0.5, 1, 1.5, 2, 3} }
 

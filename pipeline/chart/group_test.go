@@ -40,7 +40,7 @@ func TestGroupKeepsItsRate(t *testing.T) {
 	}{{"design only", 0, design}, {"design, few nights", 12, design}, {"few nights alone", 12, nil}, {"five nights each", 40, nil}, {"both", 60, design}} {
 		// Averaged over baselines: a single one may be lucky or not.
 		over, total := 0, 0
-		baselines := 12
+		baselines := 8
 		for k := range baselines {
 			g, err := LearnGroup(correlated(rng, c.nights, p, rho), c.design, uint64(k))
 			if err != nil {

@@ -153,7 +153,7 @@ func (c *Chart) Next(v Value) Judgement {
 	}
 	wide := sd * math.Sqrt(1+c.centreRatio*c.centreRatio)
 	j.Score = normalScore((y-c.b.Centre)/wide, c.b.DOF)
-	c.individuals(&j)
+	c.individuals(&j, y, sd, wide/sd)
 	c.movingRange(&j, y)
 	c.weightedMean(&j, v.Night, y, sd)
 	z := c.residual(j.Score, v.Night)
@@ -196,10 +196,10 @@ func (c *Chart) holdLines(j *Judgement) {
 	}
 }
 
-func (c *Chart) individuals(j *Judgement) {
+func (c *Chart) individuals(j *Judgement, y, sd, widened float64) {
 	if c.r.Individuals > 0 && math.Abs(j.Score) > c.r.Individuals {
 		j.flag(BeyondLimits, j.Night, j.Score, fmt.Sprintf("The value lies %.1f standard deviations %s its centre; values belong within %.1f.",
-			math.Abs(j.Score), side(j.Score), c.r.Individuals))
+			math.Abs(y-c.b.Centre)/sd, side(j.Score), c.individual*widened))
 	}
 }
 
@@ -287,8 +287,12 @@ func (j *Judgement) cusumFlag(rule string, up, down tally, h float64) {
 		sign float64
 	}{{up, 1}, {down, -1}} {
 		if s.t.sum > h {
-			j.flag(rule, s.t.since, s.sign, fmt.Sprintf("Small deviations %s the centre have added up to %.1f standard deviations over %s since night %d; the limit is %.1f.",
-				side(s.sign), s.t.sum, plural(s.t.count, "value"), s.t.since, h))
+			from := "the centre"
+			if rule == SelfStarting {
+				from = "the mean of all values before"
+			}
+			j.flag(rule, s.t.since, s.sign, fmt.Sprintf("Small deviations %s %s have added up to %.1f standard deviations over %s since night %d; the limit is %.1f.",
+				side(s.sign), from, s.t.sum, plural(s.t.count, "value"), s.t.since, h))
 		}
 	}
 }

@@ -95,21 +95,37 @@ func (c *Chart) patterns(j *Judgement) {
 	}
 	inner, outer := c.r.zone(), 2*c.r.zone()
 	w := &c.window
-	same := func(on bool, need, of int, border float64, name string) {
+	// Names are built only where a test fires: most nights none does.
+	same := func(on bool, need, of int, border float64) (sign float64, since int, ok bool) {
 		if !on {
-			return
+			return 0, 0, false
 		}
-		if sign, back, ok := w.ofLast(need, of, border); ok {
-			c.patternFlag(j, name, w.since(back), sign, need, of, border)
-		}
+		sign, back, ok := w.ofLast(need, of, border)
+		return sign, w.since(back), ok
 	}
-	same(r.TwoOfThree, 2, 3, outer, twoOfThreeName())
-	same(r.FourOfFive, 4, 5, inner, fourOfFiveName())
-	same(r.OneSide > 0, r.OneSide, r.OneSide, centreShare(c.b, sideForCentre), oneSideName(r.OneSide))
-	same(r.TwoBeyond, 2, 2, outer, twoBeyondName())
-	same(r.FourBeyond, 4, 4, inner, fourBeyondName())
+	if sign, since, ok := same(r.TwoOfThree, 2, 3, outer); ok {
+		c.patternFlag(j, twoOfThreeName(), since, sign, 2, 3, outer)
+	}
+	if sign, since, ok := same(r.FourOfFive, 4, 5, inner); ok {
+		c.patternFlag(j, fourOfFiveName(), since, sign, 4, 5, inner)
+	}
+	if sign, since, ok := same(r.OneSide > 0, r.OneSide, r.OneSide, centreShare(c.b, sideForCentre)); ok {
+		c.patternFlag(j, oneSideName(r.OneSide), since, sign, r.OneSide, r.OneSide, 0)
+	}
+	if sign, since, ok := same(r.TwoBeyond, 2, 2, outer); ok {
+		c.patternFlag(j, twoBeyondName(), since, sign, 2, 2, outer)
+	}
+	if sign, since, ok := same(r.FourBeyond, 4, 4, inner); ok {
+		c.patternFlag(j, fourBeyondName(), since, sign, 4, 4, inner)
+	}
+	c.spreadPatterns(j, inner, outer)
+}
+
+// spreadPatterns applies the tests that look at order and scatter and not at a side.
+func (c *Chart) spreadPatterns(j *Judgement, inner, outer float64) {
+	r, w := c.r.Runs, &c.window
 	if r.Opposite && w.n >= 2 && math.Abs(w.at(0)) > outer && math.Abs(w.at(1)) > outer && w.at(0)*w.at(1) < 0 {
-		j.flag(oppositeName(), w.since(1), 0, fmt.Sprintf("Two neighbouring values lie more than %.2g standard deviations from the centre on opposite sides: the scatter has grown.", outer))
+		j.flag(oppositeName(), w.since(1), 0, "Two neighbouring values lie more than two thirds of the way to the action limits on opposite sides: the scatter has grown.")
 	}
 	if n := r.Monotone; n > 0 {
 		if sign, ok := w.monotone(n); ok {
@@ -120,17 +136,20 @@ func (c *Chart) patterns(j *Judgement) {
 		j.flag(alternatingName(n), w.since(n-1), 0, fmt.Sprintf("The last %d values go up and down in turn: two sources may be taking turns.", n))
 	}
 	if n := r.Inner; n > 0 && w.all(n, func(z float64) bool { return math.Abs(z) < inner }) {
-		j.flag(innerName(n), w.since(n-1), 0, fmt.Sprintf("The last %d values all lie within %.2g standard deviations of the centre: the scatter is smaller than it was learnt.", n, inner))
+		j.flag(innerName(n), w.since(n-1), 0, fmt.Sprintf("The last %d values all lie less than a third of the way to the action limits: the scatter is smaller than it was learnt.", n))
 	}
 	if n := r.Outer; n > 0 && w.all(n, func(z float64) bool { return math.Abs(z) > inner }) {
-		j.flag(outerName(n), w.since(n-1), 0, fmt.Sprintf("The last %d values all lie more than %.2g standard deviations from the centre: the scatter has grown, or there are two levels.", n, inner))
+		j.flag(outerName(n), w.since(n-1), 0, fmt.Sprintf("The last %d values all lie more than a third of the way to the action limits: the scatter has grown, or there are two levels.", n))
 	}
 }
 
 func (c *Chart) patternFlag(j *Judgement, name string, since int, sign float64, need, of int, border float64) {
 	where := side(sign) + " the centre"
-	if border > centreShare(c.b, sideForCentre) {
-		where = fmt.Sprintf("more than %.2g standard deviations %s the centre", border, side(sign))
+	switch {
+	case border >= 2*c.r.zone():
+		where = "more than two thirds of the way to the action limit " + where
+	case border >= c.r.zone():
+		where = "more than a third of the way to the action limit " + where
 	}
 	if need == of {
 		j.flag(name, since, sign, fmt.Sprintf("The last %d values all lie %s.", of, where))

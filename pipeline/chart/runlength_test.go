@@ -3,6 +3,7 @@ package chart
 import (
 	"fmt"
 	"math"
+	"strconv"
 	"strings"
 	"testing"
 )
@@ -242,6 +243,90 @@ func TestCorrelatedNightsKeepTheRate(t *testing.T) {
 		t.Logf("%s under a day-to-day correlation of 0.5: %.0f nights, %.0f if it were ignored", c.name, aware.Mean, naive.Mean)
 		if aware.Mean < c.least-4*aware.SE {
 			t.Errorf("%s: %.1f +- %.1f, want at least %.0f", c.name, aware.Mean, aware.SE, c.least)
+		}
+	}
+}
+
+// Published run-length tables as printed by their authors, with the recomputed figure.
+func TestPublishedTables(t *testing.T) {
+	checked := 0
+	for _, r := range figures(t, "arl_published_tables.csv") {
+		p := map[string]float64{}
+		for _, kv := range strings.FieldsFunc(r["parameters"], func(c rune) bool { return c == ' ' || c == ';' }) {
+			k, v, _ := strings.Cut(kv, "=")
+			if x, err := strconv.ParseFloat(v, 64); err == nil {
+				p[k] = x
+			}
+		}
+		mu := number(t, r["mu"])
+		var got float64
+		switch r["chart"] {
+		case "I_MR":
+			got = IndividualsRangeRunLength(p["M"], p["R"], mu, 1).Mean
+		case "I_MR_sigma":
+			got = IndividualsRangeRunLength(p["M"], p["R"], 0, mu).Mean
+		case "cusum_one":
+			got = OneSidedCusumRunLength(p["k"], p["h"], 0, mu, 1).Mean
+		case "cusum_two":
+			got = CusumRunLength(p["k"], p["h"], mu, 1, false).Mean
+		case "cusum_two_FIR":
+			got = CusumRunLength(p["k"], p["h"], mu, 1, true).Mean
+		case "ewma_two", "ewma_two_fixed", "ewma_two_exact_limits":
+			w, l := p["lambda"], p["L"]
+			if w == 0 || l == 0 {
+				t.Fatalf("parameters %q", r["parameters"])
+			}
+			if r["chart"] == "ewma_two_exact_limits" {
+				got = EWMAExactRunLength(w, l, mu, 1).Mean
+			} else {
+				got = EWMARunLength(w, l, mu, 1).Mean
+			}
+		default:
+			continue // head starts of the weighted mean, steady states: not offered
+		}
+		checked++
+		near(t, r["source"]+" "+r["parameters"]+" at "+r["mu"], got, number(t, r["computed"]), 2e-6)
+	}
+	t.Logf("%d printed run lengths", checked)
+	if checked < 100 {
+		t.Errorf("only %d rows were recognised", checked)
+	}
+}
+
+// Sets of pattern tests against independent simulations of 200 000 runs.
+func TestPatternSetsAgainstSimulation(t *testing.T) {
+	near(t, "limits, nine on one side, two of three, four of five", RunsRunLength(3, Runs{OneSide: 9, TwoOfThree: true, FourOfFive: true}, 0, 1).Mean, 109.0493, 1e-6)
+	all := Simulate(Known(0, 1), Rules{Individuals: 3, Runs: PatternRuns()}, Disturbance{}, 4000, 77)
+	if math.Abs(all.Mean-73.491) > 4*all.SE {
+		t.Errorf("all eight tests: %.2f +- %.2f, independent simulation 73.49", all.Mean, all.SE)
+	}
+	for _, r := range figures(t, "arl_multirule.csv") {
+		if r["N"] != "1" {
+			continue
+		}
+		c, runs := 3.0, Runs{}
+		switch r["rules"] {
+		case "1_2s":
+			c = 2
+		case "1_3s":
+		case "1_3s/2_2s/R_4s":
+			runs = Runs{TwoBeyond: true, Opposite: true}
+		case "1_3s/2_2s/R_4s/4_1s/10_x":
+			runs = Multirule()
+		default:
+			t.Fatalf("unknown set %q", r["rules"])
+		}
+		got := RunsRunLength(c, runs, number(t, r["shift"]), 1).Mean
+		// With one value a night the table's set leaves neighbours beyond opposite
+		// borders to single runs, where it cannot fire.
+		runs.Opposite = false
+		without := RunsRunLength(c, runs, number(t, r["shift"]), 1).Mean
+		want, se := number(t, r["ARL_runs"]), number(t, r["standard_error"])
+		if math.Abs(without-want) > 4*se {
+			t.Errorf("%s at %s: %.3f, simulated %.3f +- %.3f", r["rules"], r["shift"], without, want, se)
+		}
+		if got > without+1e-9 {
+			t.Errorf("%s at %s: one more test makes runs longer", r["rules"], r["shift"])
 		}
 	}
 }
