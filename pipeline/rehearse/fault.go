@@ -2,6 +2,7 @@ package rehearse
 
 import (
 	"fmt"
+	"maps"
 	"math"
 	"math/rand/v2"
 	"slices"
@@ -52,9 +53,8 @@ func faultTable() map[string]faultFunc {
 		"file.coarse":      func(s *Set, f Fault, _ *rand.Rand) { decimals(s, int(size(f, 2))) },
 		"file.smoothed":    smoothed,
 	}
-	for key, f := range solutionFaults() {
-		table[key] = f
-	}
+	maps.Copy(table, solutionFaults())
+	maps.Copy(table, lightFaults())
 	return table
 }
 

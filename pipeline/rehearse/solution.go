@@ -6,8 +6,7 @@ import (
 	"slices"
 )
 
-// solutionFaults are the faults of solutions, cells and lamps: they change
-// several scans of a set by what happened to the light or the dye.
+// solutionFaults are the faults of the amount of dye: they multiply scans.
 func solutionFaults() map[string]faultFunc {
 	return map[string]faultFunc{
 		// From the struck rung on the cell is another one; Size is its relative path less one.
@@ -37,6 +36,12 @@ func solutionFaults() map[string]faultFunc {
 				return 1
 			})
 		},
+	}
+}
+
+// lightFaults are the faults of what scatters, absorbs or drifts besides the dye.
+func lightFaults() map[string]faultFunc {
+	return map[string]faultFunc{
 		// Size is the absorbance by which the baseline starts high; it decays over the first scans.
 		"scan.warmup": func(s *Set, f Fault, _ *rand.Rand) {
 			lift(s, func(i int, _ float64) float64 { return size(f, 0.006) * math.Exp(-float64(i)/4) })
