@@ -12,6 +12,7 @@ import (
 	netmail "net/mail"
 	"net/textproto"
 	"strings"
+	"sync"
 	"time"
 
 	gomail "github.com/wneessen/go-mail"
@@ -163,16 +164,20 @@ func (s *Sender) Send(ctx context.Context, l Letter) error {
 	if err != nil {
 		return &Error{Permanent: true, Err: err}
 	}
-	c, err := gomail.NewClient(s.s.Host, s.options()...)
+	line := &line{tls: s.tls, implicit: s.s.TLS == Implicit}
+	stop := context.AfterFunc(ctx, line.cut)
+	defer stop()
+	c, err := gomail.NewClient(s.s.Host, append(s.options(), gomail.WithDialContextFunc(line.dial))...)
 	if err != nil {
 		return &Error{Err: fmt.Errorf("relay %s: %w", s.s.Host, err)}
 	}
 	conn, err := c.DialToSMTPClientWithContext(ctx)
 	if err != nil {
+		if ctx.Err() != nil {
+			err = errors.Join(ctx.Err(), err)
+		}
 		return &Error{Code: code(err), Err: fmt.Errorf("relay %s:%d: %w", s.s.Host, s.s.Port, err)}
 	}
-	stop := context.AfterFunc(ctx, func() { _ = conn.Close() })
-	defer stop()
 	err = c.SendWithSMTPClient(conn, msg)
 	quit(c, conn)
 	if err == nil {
@@ -182,6 +187,49 @@ func (s *Sender) Send(ctx context.Context, l Letter) error {
 		err = errors.Join(ctx.Err(), err)
 	}
 	return &Error{Permanent: refused(err), Code: code(err), Err: fmt.Errorf("relay %s:%d: %w", s.s.Host, s.s.Port, err)}
+}
+
+// A line is the connection of one delivery. The client holds a lock while it
+// waits for the relay, so only closing the connection itself ends a wait.
+type line struct {
+	tls      *tls.Config
+	implicit bool
+	mu       sync.Mutex
+	conn     net.Conn
+	over     bool
+}
+
+func (l *line) dial(ctx context.Context, network, addr string) (net.Conn, error) {
+	c, err := new(net.Dialer).DialContext(ctx, network, addr)
+	if err != nil {
+		return nil, err
+	}
+	l.mu.Lock()
+	l.conn = c
+	over := l.over
+	l.mu.Unlock()
+	if over {
+		_ = c.Close()
+		return nil, context.Canceled
+	}
+	if !l.implicit {
+		return c, nil
+	}
+	t := tls.Client(c, l.tls)
+	if err := t.HandshakeContext(ctx); err != nil {
+		_ = c.Close()
+		return nil, fmt.Errorf("tls: %w", err)
+	}
+	return t, nil
+}
+
+func (l *line) cut() {
+	l.mu.Lock()
+	defer l.mu.Unlock()
+	l.over = true
+	if l.conn != nil {
+		_ = l.conn.Close()
+	}
 }
 
 // quit ends the session politely; the letter has already been accepted or refused, so its failure changes nothing.
@@ -197,14 +245,14 @@ func (s *Sender) options() []gomail.Option {
 	}
 	switch s.s.TLS {
 	case Implicit:
-		o = append(o, gomail.WithSSL(), gomail.WithTLSConfig(s.tls))
+		o = append(o, gomail.WithSSL())
 	case Off:
 		o = append(o, gomail.WithTLSPolicy(gomail.NoTLS))
 	default:
 		o = append(o, gomail.WithTLSPolicy(gomail.TLSMandatory), gomail.WithTLSConfig(s.tls))
 	}
 	if s.s.User != "" {
-		o = append(o, gomail.WithSMTPAuth(gomail.SMTPAuthAutoDiscover), gomail.WithUsername(s.s.User), gomail.WithPassword(s.s.Password))
+		o = append(o, gomail.WithOpportunisticSMTPAuth(gomail.SMTPAuthSCRAMSHA256, gomail.SMTPAuthPlain, gomail.SMTPAuthLogin), gomail.WithUsername(s.s.User), gomail.WithPassword(s.s.Password))
 	}
 	return o
 }

@@ -104,7 +104,7 @@ func New(s Settings) (*Sender, error) {
 		conf.RootCAs = roots
 	}
 	t := &http.Transport{
-		TLSClientConfig: conf, ForceAttemptHTTP2: true, DisableKeepAlives: true, MaxResponseHeaderBytes: 64 << 10,
+		Proxy: http.ProxyFromEnvironment, TLSClientConfig: conf, ForceAttemptHTTP2: true, DisableKeepAlives: true, MaxResponseHeaderBytes: 64 << 10,
 		ResponseHeaderTimeout: s.Timeout, TLSHandshakeTimeout: s.Timeout,
 	}
 	return &Sender{s: s, c: &http.Client{
