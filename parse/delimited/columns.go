@@ -260,24 +260,9 @@ func (r *reader) notAxis(a *reading, f facts) error {
 // scan takes one trace out of the grid.
 func (r *reader) scan(a *reading, t trace, f facts, pre []entry, of int) (parse.Scan, error) {
 	line := a.b.first + 1
-	n := a.b.rows
-	x, y, decs := make([]float64, 0, n), make([]float64, 0, n), make([]int8, 0, n)
-	for i, at := 0, a.b.off; i < n; i, at = i+1, at+a.b.cols {
-		kind, ak := a.g.decs[at+t.col], a.g.decs[at+t.axis]
-		if a.shape == "pairs" && ak == cellEmpty && kind == cellEmpty {
-			continue // this pair is shorter than the longest
-		}
-		if ak < parse.Exponential {
-			return parse.Scan{}, r.refuse(line+i, fmt.Sprintf("column %d", t.axis+1), "no wavelength", "a number", "export the file again")
-		}
-		if kind == cellText {
-			return parse.Scan{}, r.refuse(line+i, fmt.Sprintf("column %d", t.col+1), parse.Show(r.cell(a, i, t.col)), "a number", "export the file again")
-		}
-		v := a.g.vals[at+t.col]
-		if t.quantity == "counts" {
-			v = r.fromCounts(a, i)
-		}
-		x, y, decs = append(x, a.g.vals[at+t.axis]), append(y, v), append(decs, kind)
+	x, y, decs, err := r.take(a, t)
+	if err != nil {
+		return parse.Scan{}, err
 	}
 	if len(x) < leastDeclared {
 		return parse.Scan{}, r.refuse(line, fmt.Sprintf("column %d", t.col+1), fmt.Sprintf("%d values", len(x)), "a spectrum", "export the file again")
@@ -300,10 +285,47 @@ func (r *reader) scan(a *reading, t trace, f facts, pre []entry, of int) (parse.
 	if q == "counts" {
 		q, s.Decimals = qAbsorbance, -1
 	}
-	var err error
 	s.Scale, err = r.absorb(s.Label, q, x, y, decs, max(a.header, a.b.first-1)+1)
 	s.WavelengthNM, s.Absorbance = x, y
 	return s, err
+}
+
+// take copies a trace and its axis out of the grid.
+func (r *reader) take(a *reading, t trace) (x, y []float64, decs []int8, err error) {
+	n, cols := a.b.rows, a.b.cols
+	x, y, decs = make([]float64, n), make([]float64, n), make([]int8, n)
+	vals, kinds := a.g.vals[a.b.off:a.b.off+n*cols], a.g.decs[a.b.off:a.b.off+n*cols]
+	k := 0
+	for i, at := 0, 0; i < n; i, at = i+1, at+cols {
+		kind, v := kinds[at+t.col], vals[at+t.col]
+		if kinds[at+t.axis] < parse.Exponential || kind == cellText || kind == cellEmpty {
+			if a.shape == "pairs" && kind == cellEmpty && kinds[at+t.axis] == cellEmpty {
+				continue // this pair is shorter than the longest
+			}
+			if err := r.notNumber(a, i, t); err != nil {
+				return nil, nil, nil, err
+			}
+		}
+		if t.quantity == "counts" {
+			v = r.fromCounts(a, i)
+		}
+		x[k], y[k], decs[k] = vals[at+t.axis], v, kind
+		k++
+	}
+	return x[:k], y[:k], decs[:k], nil
+}
+
+// notNumber refuses a row without a wavelength or with words for a value; an
+// empty value is a missing one.
+func (r *reader) notNumber(a *reading, row int, t trace) error {
+	line := a.b.first + 1 + row
+	if a.g.kind(a.b, row, t.axis) < parse.Exponential {
+		return r.refuse(line, fmt.Sprintf("column %d", t.axis+1), "no wavelength", "a number", "export the file again")
+	}
+	if a.g.kind(a.b, row, t.col) == cellText {
+		return r.refuse(line, fmt.Sprintf("column %d", t.col+1), parse.Show(r.cell(a, row, t.col)), "a number", "export the file again")
+	}
+	return nil
 }
 
 // cell is the text of one cell.

@@ -19,7 +19,6 @@ type source struct {
 	text  []byte
 	spans []span
 	open  bool // the last line has no line end
-	crlf  bool // the first line ended with CR LF
 }
 
 type span struct{ from, to uint32 }
@@ -31,14 +30,27 @@ func cut(name string, text []byte) (*source, error) {
 	s := &source{name: name, text: text}
 	s.spans = make([]span, 0, min(bytes.Count(text, []byte{'\n'})+1, maxLines))
 	s.open = len(text) > 0 && text[len(text)-1] != '\n' && text[len(text)-1] != '\r'
-	returns := bytes.IndexByte(text, '\r') >= 0
-	s.crlf = returns && bytes.Contains(text, []byte("\r\n"))
+	returns := bytes.Count(text, []byte{'\r'})
+	paired, err := s.lines(false)
+	if err == nil && paired != returns { // some CR stands without LF and ends a line itself
+		s.spans = s.spans[:0]
+		_, err = s.lines(true)
+	}
+	return s, err
+}
+
+// lines fills s.spans and counts the CR taken off before a LF.
+func (s *source) lines(lone bool) (paired int, err error) {
+	text := s.text
 	for at := 0; at < len(text); {
 		end, next := len(text), len(text)
 		if k := bytes.IndexByte(text[at:], '\n'); k >= 0 {
 			end, next = at+k, at+k+1
 		}
-		if returns {
+		if !lone && end > at && text[end-1] == '\r' && end < len(text) {
+			end--
+			paired++
+		} else if lone {
 			if k := bytes.IndexByte(text[at:end], '\r'); k >= 0 {
 				if at+k+1 < end {
 					next = at + k + 1
@@ -47,17 +59,17 @@ func cut(name string, text []byte) (*source, error) {
 			}
 		}
 		if end-at > maxLine {
-			return nil, &parse.Error{File: name, Line: len(s.spans) + 1, Found: fmt.Sprintf("a line of %d bytes", end-at),
+			return 0, &parse.Error{File: s.name, Line: len(s.spans) + 1, Found: fmt.Sprintf("a line of %d bytes", end-at),
 				Expected: fmt.Sprintf("lines of at most %d", maxLine), Remedy: "this is no table of text; check the export"}
 		}
 		if len(s.spans) == maxLines {
-			return nil, &parse.Error{File: name, Line: maxLines, Found: "more lines than that",
+			return 0, &parse.Error{File: s.name, Line: maxLines, Found: "more lines than that",
 				Expected: fmt.Sprintf("at most %d lines", maxLines), Remedy: "split the export"}
 		}
 		s.spans = append(s.spans, span{uint32(at), uint32(end)})
 		at = next
 	}
-	return s, nil
+	return paired, nil
 }
 
 // blank tells whether a line holds nothing but blanks and the delimiters that

@@ -5,6 +5,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"slices"
 	"strconv"
 	"strings"
 	"time"
@@ -106,12 +107,20 @@ func (o *writer) scans(scans []parse.Scan) {
 	}
 }
 
+// readings leaves the column of pH out where there are only potentials.
 func (o *writer) readings(rs []parse.Reading) {
-	o.row("rung", "pH", "mV", "temperature (C)", "sd", "slope per min", "points", "read at", "electrode", "meter")
+	cells := []string{"rung", "pH", "mV", "temperature (C)", "sd", "slope per min", "points", "read at", "electrode", "meter"}
+	onlyMV := !slices.ContainsFunc(rs, func(p parse.Reading) bool { return !math.IsNaN(p.PH) })
+	put := func(cells []string) {
+		if onlyMV {
+			cells = slices.Delete(cells, 1, 2)
+		}
+		o.row(cells...)
+	}
+	put(cells)
 	for _, p := range rs {
-		ph := figure(p.PH)
-		o.row(p.Label, ph, figure(p.MilliVolt), figure(p.TemperatureC), figure(p.SD), figure(p.SlopePerMin), strconv.Itoa(p.Points),
-			o.moment(p.Measured, p.Zoned), p.Electrode, p.Meter)
+		put([]string{p.Label, figure(p.PH), figure(p.MilliVolt), figure(p.TemperatureC), figure(p.SD), figure(p.SlopePerMin), strconv.Itoa(p.Points),
+			o.moment(p.Measured, p.Zoned), p.Electrode, p.Meter})
 	}
 }
 
