@@ -115,7 +115,7 @@ func plain(s string, limit int) string {
 			space = n > 0
 			continue
 		}
-		if n >= limit-1 {
+		if n >= limit-1 || (space && n >= limit-2) {
 			b.WriteRune('…')
 			break
 		}
@@ -223,10 +223,11 @@ func (c Content) subject() string {
 	case WhyTest:
 		s = "Test: " + s
 	}
+	tail := ""
 	if n := c.ResultsAll; n > 0 {
-		s += fmt.Sprintf("; %s touched", count(n, "result"))
+		tail = fmt.Sprintf("; %s touched", count(n, "result"))
 	}
-	return plain(s, subjectRunes)
+	return plain(s, subjectRunes-len(tail)) + tail
 }
 
 func count(n int, what string) string {
