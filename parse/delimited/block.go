@@ -1,6 +1,7 @@
 package delimited
 
 import (
+	"bytes"
 	"math"
 
 	"pkvigil/parse"
@@ -196,8 +197,12 @@ func (d dialect) hopeful(s *source) bool {
 	n := len(s.spans)
 	for k := range min(looks, n) {
 		at := n/2 + (1-2*(k%2))*((k+1)/2)*n/(looks+1) // the middle first, then outward
+		line := s.line(min(max(at, 0), n-1))
+		if d.delim != ' ' && bytes.IndexByte(line, d.delim) < 0 || d.delim == ' ' && bytes.IndexByte(line, ' ') < 0 && bytes.IndexByte(line, '\t') < 0 {
+			continue
+		}
 		var cols int
-		vals, decs, cols, fields = d.numeric(s.line(min(max(at, 0), n-1)), vals[:0], decs[:0], fields)
+		vals, decs, cols, fields = d.numeric(line, vals[:0], decs[:0], fields)
 		if cols >= 2 {
 			return true
 		}

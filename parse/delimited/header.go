@@ -126,7 +126,7 @@ func (r *reader) learn(f *facts, point byte, line int, key, value string) {
 	switch {
 	case value == "" && key == "":
 		return
-	case key == "" && mere(value) && ordinate(quantity(value)), key != "" && mere(key) && ordinate(quantity(key)) && (value == "" || value[0] == '['):
+	case key == "" && ordinate(quantity(value)) && mere(value), key != "" && (value == "" || value[0] == '[') && ordinate(quantity(key)) && mere(key):
 		f.mode, f.modeLine = key+value, line
 	}
 	keep := func() { f.meta = append(f.meta, parse.Field{Key: key, Value: value}) }

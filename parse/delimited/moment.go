@@ -98,12 +98,16 @@ func plausible(t time.Time, zoned bool, note, text string) (time.Time, bool, str
 	return t, zoned, note, nil
 }
 
-// doubt tells whether the wall clock of t occurs twice in its zone.
+// doubt tells whether the wall clock of t occurs twice in its zone: whether
+// at another moment, d away, the zone's offset differs by just d.
 func doubt(t time.Time, zone *time.Location) string {
-	wall := func(u time.Time) string { return u.In(zone).Format("2006-01-02 15:04:05") }
+	if zone == time.UTC {
+		return ""
+	}
+	_, own := t.In(zone).Zone()
 	for _, d := range [...]time.Duration{-time.Hour, time.Hour, -30 * time.Minute, 30 * time.Minute} {
-		if wall(t.Add(d)) == wall(t) {
-			return fmt.Sprintf("%s occurs twice on the night of the clock change; pair by number, not by time", wall(t))
+		if _, other := t.Add(d).In(zone).Zone(); own-other == int(d/time.Second) {
+			return fmt.Sprintf("%s occurs twice on the night of the clock change; pair by number, not by time", t.In(zone).Format("2006-01-02 15:04:05"))
 		}
 	}
 	return ""

@@ -60,6 +60,9 @@ func (r *reader) noteFound(a *reading) {
 		r.found.Thousands = string(rune(a.d.thousands))
 	}
 	r.found.HeaderLine, r.found.FirstLine = a.header+1, a.b.first+1
+	if !r.telling {
+		return
+	}
 	if a.header >= 0 {
 		r.say(a.header+1, "%s are the heads of the columns", parse.Show(r.src.line(a.header)))
 	}
@@ -88,7 +91,7 @@ func (r *reader) preamble(a *reading) (facts, []entry) {
 			continue // a value per column
 		}
 		r.learn(&f, a.d.point, e.line, e.key, e.value)
-		if e.key != "" && headerKey(e.key) != 0 {
+		if r.telling && e.key != "" && headerKey(e.key) != 0 {
 			r.say(e.line, "%s is a header line: %s", parse.Show(e.key), parse.Show(e.value))
 		}
 	}
