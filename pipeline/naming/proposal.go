@@ -17,7 +17,6 @@ type part struct {
 type form struct {
 	c     *cluster
 	parts []part
-	role  string // "" with a role group
 }
 
 // rules turns clusters into rules: forms that begin alike become one rule with

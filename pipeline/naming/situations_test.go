@@ -15,11 +15,10 @@ type wanted struct {
 // situation is one way of naming files with its rules, paths that fit and
 // paths that must not.
 type situation struct {
-	name    string
-	rules   []Rule
-	fits    []wanted
-	parked  []string
-	twoHits []string
+	name   string
+	rules  []Rule
+	fits   []wanted
+	parked []string
 }
 
 // situations are the 16 naming situations of the requirements, with their

@@ -21,10 +21,21 @@ type binder struct {
 	set   map[string]bool   // paths that the file states
 	names map[string]string // names of list elements
 	errs  []*Error
+	bad   map[string]bool // paths whose value could not be bound; no check has a say about them
+	bound bool            // binding is over, checks go on
 }
 
 // fault notes what is wrong at a path such as "folder[0].settle".
 func (b *binder) fault(path, found, expected, example string) {
+	if !b.bound {
+		b.bad[path] = true
+	} else {
+		for p := range b.bad {
+			if p == path || strings.HasPrefix(p, path+"[") {
+				return
+			}
+		}
+	}
 	b.errs = append(b.errs, &Error{File: b.file, Line: b.lines.of(path), Key: b.readable(path), Found: found, Expected: expected, Example: example})
 }
 
@@ -297,7 +308,8 @@ func (b *binder) duration(dst reflect.Value, v any, at string) {
 		return
 	}
 	d, err := ParseDuration(s)
-	if err != nil || d < 0 {
+	slow := last(at) == "clock_ahead" // a clock may be behind as well; nothing else lasts less than nothing
+	if err != nil || (d < 0 && !slow) {
 		b.wrongType(at, v, `a length of time with its unit: ms, s, m, h or d, as "90s", "20m" or "3d"`)
 		return
 	}

@@ -49,8 +49,11 @@ func (c *checker) word(path, found string, allowed ...string) {
 		return
 	}
 	allowed = slices.DeleteFunc(allowed, func(s string) bool { return s == "" })
-	c.fault(path, fmt.Sprintf("%q", found), "one of "+strings.Join(allowed, ", "),
-		fmt.Sprintf("%s = %q", last(path), naming.ClosestWord(found, allowed)))
+	example := fmt.Sprintf("%s = %q", last(path), naming.ClosestWord(found, allowed))
+	if strings.Contains(exampleLine(parent(path), last(path)), "= [") {
+		example = fmt.Sprintf("%s = [%q]", last(path), naming.ClosestWord(found, allowed))
+	}
+	c.fault(path, fmt.Sprintf("%q", found), "one of "+strings.Join(allowed, ", "), example)
 }
 
 // between demands lo <= v <= hi.
@@ -169,6 +172,7 @@ func (c *checker) folder(i int, f Folder) {
 	c.span(p("settle"), f.Settle, 0, time.Hour)
 	c.span(p("sweep"), f.Sweep, 100*time.Millisecond, time.Hour)
 	c.span(p("silence_deadline"), f.Silence, time.Minute, 7*24*time.Hour)
+	c.span(p("clock_ahead"), f.ClockAhead, -366*24*time.Hour, 366*24*time.Hour)
 	c.zone(p("zone"), f.Zone, true)
 	c.clock(p("expect_first"), f.ExpectFrom, true)
 	for _, g := range f.Ignore {

@@ -63,6 +63,9 @@ func (w *lineWalker) header() string {
 		path = join(path, p)
 		switch {
 		case array && n == len(parts)-1:
+			if _, ok := w.at[path]; !ok {
+				w.at[path] = line
+			}
 			w.count[path]++
 			path = fmt.Sprintf("%s[%d]", path, w.count[path]-1)
 		case w.count[path] > 0:

@@ -83,10 +83,11 @@ func Read(data []byte, name string) (*Settings, error) {
 	if _, err := toml.Decode(text, &tree); err != nil {
 		return nil, syntaxError(err, name)
 	}
-	b := &binder{file: name, lines: indexLines(text), set: map[string]bool{}, names: itemNames(tree)}
+	b := &binder{file: name, lines: indexLines(text), set: map[string]bool{}, bad: map[string]bool{}, names: itemNames(tree)}
 	s := Defaults()
 	b.table(reflect.ValueOf(s).Elem(), tree, "")
 	wrongTypes := len(b.errs)
+	b.bound = true
 	c := &checker{binder: b, s: s}
 	c.all(wrongTypes == 0)
 	if len(b.errs) > 0 {
