@@ -77,6 +77,12 @@ type Baseline struct {
 // Usable reports whether values may be judged against the baseline.
 func (b Baseline) Usable() bool { return b.Refused == "" && b.SD > 0 }
 
+// Shown returns centre and spread in the unit that is reported: the characteristic's
+// own, or its square (the spread then to first order).
+func (b Baseline) Shown() (centre, sd float64) {
+	return b.Scale.toShow(b.Centre), b.Scale.spreadToShow(b.Centre, b.SD)
+}
+
 // Known returns a baseline with a centre and spread that are taken as exact, as
 // textbook charts and run-length theory do.
 func Known(centre, sd float64) Baseline {

@@ -241,7 +241,11 @@ func TestSquares(t *testing.T) {
 		if b.Refused != "" {
 			continue
 		}
+		centre, sd := b.Shown()
 		js := Judge(b, base[:1], Rules{Individuals: 3})
+		if centre != js[0].Centre || sd != js[0].SD || math.Abs(sd-0.64*math.Sqrt(2.0/f)) > 0.12 {
+			t.Errorf("baseline %d: shown %.3f +- %.3f; a mean square on ten degrees of freedom scatters by 0.45 of itself", k, centre, sd)
+		}
 		if math.Abs(js[0].Centre-0.64) > 0.15 || !(js[0].LimitLow >= 0) || !(js[0].LimitHigh-js[0].Centre > js[0].Centre-js[0].LimitLow) {
 			t.Errorf("baseline %d: limits %.3f %.3f about %.3f; squares of 0.8 are near 0.64 and skewed", k, js[0].LimitLow, js[0].LimitHigh, js[0].Centre)
 		}

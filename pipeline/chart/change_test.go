@@ -124,3 +124,20 @@ func TestSawtooth(t *testing.T) {
 		t.Errorf("before any calibration: %+v", none)
 	}
 }
+
+func TestDifferences(t *testing.T) {
+	a := []Value{{1, 8.26, 0.003}, {2, 8.27, 0.003}, {4, 8.25, 0}, {5, math.NaN(), 0}, {6, 8.20, 0}, {6, 8.30, 0}}
+	b := []Value{{6, 8.24, 0.004}, {1, 8.25, 0.004}, {3, 8.25, 0.004}, {4, 8.26, 0.004}, {5, 8.2, 0}}
+	want := []Value{{1, 0.01, 0.005}, {4, -0.01, 0}, {6, 0.01, 0}}
+	got := Differences(a, b)
+	if len(got) != len(want) {
+		t.Fatalf("%v", got)
+	}
+	for i, w := range want {
+		if got[i].Night != w.Night {
+			t.Errorf("night %d, want %d", got[i].Night, w.Night)
+		}
+		near(t, "difference", got[i].X, w.X, 1e-12)
+		near(t, "its uncertainty", got[i].SD, w.SD, 1e-12)
+	}
+}

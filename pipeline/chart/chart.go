@@ -81,6 +81,15 @@ func (s Scale) toShow(y float64) float64 {
 	return y
 }
 
+// spreadToShow converts a small standard deviation at y on the charting scale to the
+// unit that is reported.
+func (s Scale) spreadToShow(y, sd float64) float64 {
+	if s == Squares {
+		return 3 * y * y * sd
+	}
+	return sd
+}
+
 // norm returns the value of the charting scale in the characteristic's own unit.
 func (s Scale) norm(y float64) float64 {
 	if s == Squares {
@@ -90,6 +99,51 @@ func (s Scale) norm(y float64) float64 {
 		return math.Pow(y, 1.5)
 	}
 	return y
+}
+
+// Differences returns, night by night, what instrument a reads above instrument b for
+// the same characteristic and reference, to be charted as a series of its own. Nights
+// on which either has no value are left out; several values of one night are averaged
+// first. Own uncertainties add in quadrature where both are known.
+func Differences(a, b []Value) []Value {
+	x, y := nightMeans(a), nightMeans(b)
+	var out []Value
+	for i, j := 0, 0; i < len(x) && j < len(y); {
+		switch {
+		case x[i].Night < y[j].Night:
+			i++
+		case x[i].Night > y[j].Night:
+			j++
+		default:
+			d := Value{Night: x[i].Night, X: x[i].X - y[j].X}
+			if x[i].SD > 0 && y[j].SD > 0 {
+				d.SD = math.Hypot(x[i].SD, y[j].SD)
+			}
+			out = append(out, d)
+			i, j = i+1, j+1
+		}
+	}
+	return out
+}
+
+// nightMeans averages the values of each night, in order of night.
+func nightMeans(values []Value) []Value {
+	var out []Value
+	vs := usableValues(values)
+	for i := 0; i < len(vs); {
+		m := Value{Night: vs[i].Night}
+		n, ss, known := 0.0, 0.0, true
+		for ; i < len(vs) && vs[i].Night == m.Night; i++ {
+			n, m.X, ss = n+1, m.X+vs[i].X, ss+vs[i].SD*vs[i].SD
+			known = known && vs[i].SD > 0
+		}
+		m.X /= n
+		if known {
+			m.SD = math.Sqrt(ss) / n
+		}
+		out = append(out, m)
+	}
+	return out
 }
 
 // finite reports whether x is an ordinary number.

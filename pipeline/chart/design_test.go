@@ -96,3 +96,18 @@ func TestLimitsForRefusesNonsense(t *testing.T) {
 		}
 	}
 }
+
+// What is printed must be what was found.
+func TestDesignLines(t *testing.T) {
+	_, d, err := LimitsFor(365, 10, Rules{Individuals: 3, SelfStarting: 5})
+	if err != nil {
+		t.Fatal(err)
+	}
+	text := strings.Join(d.Lines(), "\n")
+	t.Log("\n" + text)
+	for _, want := range []string{BeyondLimits, SelfStarting, "7300", "one in 365 nights over 10 charts", "at least 3650"} {
+		if !strings.Contains(text, want) {
+			t.Errorf("%q is not printed", want)
+		}
+	}
+}

@@ -178,7 +178,7 @@ func (c *Chart) nightSD(v Value, y float64, none bool) float64 {
 // lines fills in centre and individual limits.
 func (c *Chart) lines(j *Judgement, sd float64) {
 	show := c.b.Scale.toShow
-	j.Centre, j.SD = show(c.b.Centre), sd
+	j.Centre, j.SD = show(c.b.Centre), c.b.Scale.spreadToShow(c.b.Centre, sd)
 	if c.r.Individuals > 0 {
 		half := c.individual * sd * math.Sqrt(1+c.centreRatio*c.centreRatio)
 		j.LimitLow, j.LimitHigh = show(c.b.Centre-half), show(c.b.Centre+half)
