@@ -3,15 +3,17 @@ package spectra
 import (
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 
 	"gonum.org/v1/gonum/mat"
 )
 
-// The rules for displaced scans, nm.
+// The rules for displaced scans.
 const (
-	alignMost = 0.3  // a larger displacement is reported, not mended
-	alignSeen = 0.05 // a smaller one is left as it is
+	alignMost = 0.3  // nm: a larger displacement is reported, not mended
+	alignSeen = 0.05 // nm: a smaller one is left as it is
+	alignSure = 7    // standard deviations to first order: noise of the spectra themselves makes these a third too small
 )
 
 // align finds how far each scan is displaced in wavelength relative to the
@@ -38,7 +40,7 @@ func (p *preparation) align() {
 			r := &p.rows[i]
 			now := total[i] + delta[i]
 			r.shift = now
-			if !p.opt.Align || math.Abs(now) > alignMost || math.Abs(delta[i]) < math.Max(4*sd[i], alignSeen/(1+2*float64(round))) {
+			if !p.opt.Align || math.Abs(now) > alignMost || math.Abs(delta[i]) < math.Max(alignSure*sd[i], alignSeen/(1+2*float64(round))) {
 				continue
 			}
 			y := make([]float64, len(r.a))
@@ -64,7 +66,7 @@ func (p *preparation) reportShifts(sd []float64, mended map[string]float64) {
 			most = math.Max(most, math.Abs(r.shift))
 			continue
 		}
-		if math.Abs(r.shift) > math.Max(4*sd[i], alignSeen) && (math.Abs(r.shift) > alignMost || !p.opt.Align) {
+		if math.Abs(r.shift) > math.Max(alignSure*sd[i], alignSeen) && (math.Abs(r.shift) > alignMost || !p.opt.Align) {
 			large = append(large, r.key)
 			largest = math.Max(largest, math.Abs(r.shift))
 		}
@@ -157,27 +159,40 @@ func (p *preparation) displacement() (delta, sd []float64) {
 			sd[i] += vec.At(i, c) * vec.At(i, c) * variance / values[c]
 		}
 	}
+	// The zero of the displacements is where half of the colour lies on either side.
+	weight := make([]float64, m)
 	for i := range m {
-		if !flanksAgree(r[i*w:(i+1)*w], g[i*w:(i+1)*w], strongest(g, m, w)) {
-			delta[i] = 0
-		}
+		weight[i] = dot(g[i*w:(i+1)*w], g[i*w:(i+1)*w])
 	}
-	// The zero of the displacements is the scan in the middle of them.
-	zero := median(append([]float64(nil), delta...))
+	zero := weightedMedian(delta, weight)
+	most := math.Sqrt(slices.Max(weight))
 	for i := range m {
 		delta[i] -= zero
 		sd[i] = math.Sqrt(sd[i])
+		if !flanksAgree(r[i*w:(i+1)*w], g[i*w:(i+1)*w], most) {
+			delta[i] = 0
+		}
 	}
 	return delta, sd
 }
 
-// strongest is the largest norm of the rows of g.
-func strongest(g []float64, m, w int) float64 {
-	most := 0.0
-	for i := range m {
-		most = math.Max(most, math.Sqrt(dot(g[i*w:(i+1)*w], g[i*w:(i+1)*w])))
+// weightedMedian is the smallest value at which half of the weight is reached.
+func weightedMedian(v, weight []float64) float64 {
+	order := make([]int, len(v))
+	total := 0.0
+	for i := range order {
+		order[i] = i
+		total += weight[i]
 	}
-	return most
+	slices.SortFunc(order, func(a, b int) int { return compare(v[a], v[b]) })
+	sum := 0.0
+	for _, i := range order {
+		sum += weight[i]
+		if sum >= total/2 {
+			return v[i]
+		}
+	}
+	return 0
 }
 
 // flanksAgree says whether rising and falling flanks give a displacement of one

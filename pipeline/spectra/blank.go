@@ -197,30 +197,41 @@ func (p *preparation) blankSD(values [][]float64) {
 	}
 }
 
-// sourceStep looks for a jump of the blank at one wavelength, as a change of
-// lamp or filter leaves it, and masks ±3 nm about it.
+// sourceStep looks for a jump of the blank between two neighbouring
+// wavelengths, as a change of lamp or filter leaves it, and masks ±3 nm about
+// it. A steep band is no step: its slope changes over several points. A spike
+// is none either: behind it the level is the old one.
 func (p *preparation) sourceStep() {
-	const half = 8 // points on each side
-	n := len(p.x)
+	const half = 12 // points on each side
+	overall := thirdDifferenceSD(p.blank)
 	best, at := 0.0, -1
-	jumps := make([]float64, 0, n)
-	for j := half; j+half <= n; j++ {
-		left, ok1 := lineEnd(p.x[j-half:j], p.blank[j-half:j], (p.x[j-1]+p.x[j])/2)
-		right, ok2 := lineEnd(p.x[j:j+half], p.blank[j:j+half], (p.x[j-1]+p.x[j])/2)
-		if !ok1 || !ok2 {
+	around := make([]float64, 0, 2*half)
+	for j := half + 1; j+half < len(p.x); j++ {
+		middle := (p.x[j-1] + p.x[j]) / 2
+		left, _ := lineEnd(p.x[j-half:j], p.blank[j-half:j], middle)
+		right, _ := lineEnd(p.x[j:j+half], p.blank[j:j+half], middle)
+		level := right - left
+		if !(math.Abs(level) > math.Max(6*overall, 0.001)) || math.Abs(level) <= math.Abs(best) {
 			continue
 		}
-		d := right - left
-		jumps = append(jumps, math.Abs(d))
-		if math.Abs(d) > math.Abs(best) {
-			best, at = d, j
+		around = around[:0]
+		for k := j - half; k <= j+half; k++ {
+			if k != j {
+				around = append(around, p.blank[k]-p.blank[k-1])
+			}
+		}
+		usual := median(around)
+		jump := p.blank[j] - p.blank[j-1] - usual
+		rough := 0.0
+		for _, d := range around {
+			rough = math.Max(rough, math.Abs(d-usual))
+		}
+		// The one difference must hold what the levels say, and stand alone.
+		if math.Abs(level-jump) < 4*overall+0.2*math.Abs(level) && rough < 0.6*math.Abs(jump) {
+			best, at = level, j
 		}
 	}
 	if at < 0 {
-		return
-	}
-	usual := median(jumps) / 0.6745
-	if math.Abs(best) < 8*usual || math.Abs(best) < 0.0005 {
 		return
 	}
 	nm := (p.x[at-1] + p.x[at]) / 2

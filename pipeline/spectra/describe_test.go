@@ -315,3 +315,69 @@ func TestRealSpectra(t *testing.T) {
 		t.Log(r.Text)
 	}
 }
+
+// realColumns reads a table whose first column is wavelength.
+func realColumns(t *testing.T, rows [][]string) (x []float64, cols map[string][]float64) {
+	t.Helper()
+	cols = make(map[string][]float64)
+	for _, r := range rows[1:] {
+		x = append(x, number(t, r[0]))
+		for c := 1; c < len(r); c++ {
+			cols[rows[0][c]] = append(cols[rows[0][c]], number(t, r[c]))
+		}
+	}
+	return x, cols
+}
+
+// Real bromophenol blue in certified seawater against archived forms of it and
+// of m-cresol purple: the right dye each time, by a margin.
+func TestRealDyeMatch(t *testing.T) {
+	x, ends := realColumns(t, outside(t, "data", "real", "crm_dye_spectra", "end_members.csv"))
+	sx, spectra := realColumns(t, outside(t, "data", "real", "crm_dye_spectra", "bpb_2019_spectra.csv"))
+	library := []LibraryEntry{
+		{"m-cresol purple", x, append(append([]float64(nil), ends["mcp_acid"]...), ends["mcp_base"]...)},
+		{"bromophenol blue", x, append(append([]float64(nil), ends["bpb_acid"]...), ends["bpb_base"]...)},
+	}
+	worst, margin := 1.0, 1.0
+	for name, y := range spectra {
+		m := DyeMatch(sx, y, library)
+		if len(m) != 2 || m[0].Name != "bromophenol blue" {
+			t.Errorf("%s: %+v", name, m)
+			continue
+		}
+		worst = math.Min(worst, m[0].Cosine)
+		margin = math.Min(margin, m[0].Cosine-m[1].Cosine)
+	}
+	if len(spectra) != 61 || worst < 0.99 || margin < 0.01 {
+		t.Errorf("%d spectra, worst %.4f, margin %.4f", len(spectra), worst, margin)
+	}
+	// Ratios of bromophenol blue are read at 590 and 436 nm, of m-cresol purple at 578 and 434 nm.
+	for name, nm := range map[string]float64{"bpb_base": 590, "mcp_base": 578} {
+		b := Bands(x, ends[name], nil)
+		if len(b) == 0 {
+			t.Fatalf("%s has no band", name)
+		}
+		near(t, name, b[0].NM, nm, 3.5)
+		t.Logf("%s %.2f nm, worst cosine %.5f, margin %.4f", name, b[0].NM, worst, margin)
+	}
+}
+
+// Fifteen scans of a laboratory photometer, baselines and reference water with
+// four decimals: the noise is that of the digits or a little more, and the
+// steep bands of water are not taken for steps of the source.
+func TestRealBaseline(t *testing.T) {
+	x, cols := realColumns(t, outside(t, "data", "real", "photometer_baseline", "series.csv"))
+	for name, y := range cols {
+		sd := thirdDifferenceSD(y[150:])
+		if digits := 1e-4 / math.Sqrt(12); !(sd > digits && sd < 1e-3) {
+			t.Errorf("%s from %g nm: noise %g", name, x[150], sd)
+		}
+		p := &preparation{x: x, blank: y, out: &Prepared{}, use: make([]bool, len(x))}
+		p.sourceStep()
+		for _, r := range p.out.Records {
+			if math.Abs(r.Value) > 0.0015 {
+				t.Errorf("%s: %s", name, r.Text)
+			}
+		}
+	}
+}

@@ -161,7 +161,7 @@ func faultTable() []fault {
 		{name: "source change", set: func(s *paperSet) {
 			s.blank = func(x float64) float64 { return 0.02 + 0.008*b2f(x < 480.5) }
 		}, record: "scan.step", value: func(r Record, p *Prepared) error {
-			if math.Abs(r.Value+0.008) > 0.0015 || len(p.Masked) != 1 || p.Masked[0][0] > 480 || p.Masked[0][1] < 481 {
+			if math.Abs(r.Value+0.008) > 0.002 || len(p.Masked) != 1 || p.Masked[0][0] > 480 || p.Masked[0][1] < 481 {
 				return fmt.Errorf("step %g masked %v", r.Value, p.Masked)
 			}
 			return nil
