@@ -119,3 +119,35 @@ func (s *Store) EverWaited(ctx context.Context) (map[int64]bool, error) {
 	}
 	return out, nil
 }
+
+// Gauges gives the numbers a monitor watches, by metric and label.
+func (s *Store) Gauges(ctx context.Context, now time.Time) (map[string]map[string]float64, error) {
+	rows, err := s.pool.Query(ctx, `
+		SELECT 'pkvigil_files', state, count(*)::float8 FROM pkvigil.file GROUP BY state
+		UNION ALL SELECT 'pkvigil_sets', state, count(*) FROM pkvigil.sample_set GROUP BY state
+		UNION ALL SELECT 'pkvigil_results', verdict, count(*) FROM pkvigil.standing WHERE current GROUP BY verdict
+		UNION ALL SELECT 'pkvigil_cases', state, count(*) FROM (SELECT DISTINCT ON (case_id) state FROM pkvigil.case_state ORDER BY case_id, id DESC) c GROUP BY state
+		UNION ALL SELECT 'pkvigil_jobs_open', queue, count(*) FROM pkvigil.river_job WHERE state IN ('available','pending','running','retryable','scheduled') GROUP BY queue
+		UNION ALL SELECT 'pkvigil_oldest_waiting_seconds', '', coalesce(max(extract(epoch FROM $1::timestamptz - last_seen)), 0)::float8 FROM pkvigil.sample_set WHERE state IN ('gathering','waiting')
+		UNION ALL SELECT 'pkvigil_deliveries_pending', '', count(*) FROM pkvigil.delivery WHERE state = 'pending'
+		UNION ALL SELECT 'pkvigil_deliveries_failing', '', count(*) FROM pkvigil.delivery WHERE state = 'pending' AND attempts > 2
+		UNION ALL SELECT 'pkvigil_last_stored_look_seconds', root, extract(epoch FROM $1::timestamptz - looked_at)::float8 FROM pkvigil.root_state
+		UNION ALL SELECT 'pkvigil_folder_visible', root, visible::int FROM pkvigil.root_state`, now)
+	if err != nil {
+		return nil, fmt.Errorf("reading gauges: %w", safe(err))
+	}
+	out := map[string]map[string]float64{}
+	var name, label string
+	var v float64
+	_, err = pgx.ForEachRow(rows, []any{&name, &label, &v}, func() error {
+		if out[name] == nil {
+			out[name] = map[string]float64{}
+		}
+		out[name][label] = v
+		return nil
+	})
+	if err != nil {
+		return nil, fmt.Errorf("reading gauges: %w", safe(err))
+	}
+	return out, nil
+}

@@ -70,6 +70,7 @@ type Facts struct {
 	Doubled         [][2]string // rungs whose spectra are the same within noise though pH differs
 	Cloned          [][2]string // rungs whose numbers are the same digit by digit
 	SamePH          [][2]string // consecutive rungs with the same pH and different spectra
+	Foreign         []string    // rungs whose spectrum does not belong to this dye
 	MissingBlank    bool
 	SubstituteBlank bool
 	UnknownLot      string

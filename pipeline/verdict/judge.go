@@ -75,6 +75,9 @@ func (j *judge) labels(f Facts) {
 	for _, p := range f.Doubled {
 		j.finding("scan.doubled", Held, fmt.Sprintf("%s and %s are the same solution: their spectra agree within noise though their pH differs.", p[0], p[1]), fmt.Sprintf("Scan %s and %s again.", p[0], p[1]))
 	}
+	for _, k := range f.Foreign {
+		j.finding("scan.foreign", Held, fmt.Sprintf("The spectrum of %s does not belong to this dye.", k), fmt.Sprintf("Look at the vial of %s and scan it again.", k))
+	}
 	for _, p := range f.SamePH {
 		j.finding("ph.copy", Noted, fmt.Sprintf("%s and %s have the same pH to the digit, but their spectra differ.", p[0], p[1]), fmt.Sprintf("Look up the reading of %s and %s.", p[0], p[1]))
 	}

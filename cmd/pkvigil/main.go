@@ -1,0 +1,18 @@
+// Pkvigil watches the export folders of a laboratory that measures acid
+// dissociation constants by UV-visible spectrophotometry, computes and judges
+// every sample set, and tells when a reference indicator drifts.
+package main
+
+import (
+	"context"
+	"os"
+	"os/signal"
+	"syscall"
+)
+
+func main() {
+	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt, syscall.SIGTERM)
+	code := run(ctx, os.Args[1:], os.Stdout, os.Stderr)
+	stop()
+	os.Exit(code)
+}

@@ -1,0 +1,26 @@
+package pipeline
+
+import (
+	"net"
+	"os"
+)
+
+// NotifyReady tells the service manager, where there is one, that everything
+// runs (the sd_notify protocol: one datagram to the socket in NOTIFY_SOCKET).
+func NotifyReady() { notify("READY=1") }
+
+func notify(state string) {
+	path := os.Getenv("NOTIFY_SOCKET")
+	if path == "" {
+		return
+	}
+	if path[0] == '@' {
+		path = "\x00" + path[1:]
+	}
+	c, err := net.DialUnix("unixgram", nil, &net.UnixAddr{Name: path, Net: "unixgram"})
+	if err != nil {
+		return // nobody listens; the service runs all the same
+	}
+	defer c.Close()
+	_, _ = c.Write([]byte(state)) // a manager that went away is no reason to stop
+}

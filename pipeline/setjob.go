@@ -1,0 +1,492 @@
+package pipeline
+
+import (
+	"context"
+	"crypto/sha256"
+	"encoding/json"
+	"errors"
+	"fmt"
+	"math"
+	"slices"
+	"strings"
+	"time"
+
+	"github.com/jackc/pgx/v5"
+
+	"pkvigil/db"
+	"pkvigil/db/job"
+	"pkvigil/parse"
+	"pkvigil/pipeline/assay"
+	"pkvigil/pipeline/fit"
+	"pkvigil/pipeline/naming"
+	"pkvigil/pipeline/settings"
+	"pkvigil/pipeline/spectra"
+	"pkvigil/pipeline/verdict"
+)
+
+// computeSet loads, computes, judges and stores one set; done is called in
+// the transaction that stores the result. A job for an older revision than
+// the set now has does nothing: the newer revision has a job of its own.
+func (s *Service) computeSet(ctx context.Context, a job.Set, done func(context.Context, pgx.Tx) error) error {
+	data, err := s.store.LoadSet(ctx, a.SetID)
+	if err != nil {
+		return fmt.Errorf("loading set %d: %w", a.SetID, err)
+	}
+	if data.Set.Revision != a.Revision {
+		return s.store.InTx(ctx, func(tx pgx.Tx) error { return done(ctx, tx) })
+	}
+	in, used, err := s.input(ctx, data)
+	if err != nil {
+		return fmt.Errorf("set %s: %w", data.Set.Key, err)
+	}
+	out := assay.Compute(*in)
+	res, err := s.result(data, in, used, out, a.At)
+	if err != nil {
+		return fmt.Errorf("set %s: %w", data.Set.Key, err)
+	}
+	return s.store.InTx(ctx, func(tx pgx.Tx) error {
+		// The set may have changed while it was computed; then the newer job decides its state.
+		now, err := s.store.SetByID(ctx, tx, data.Set.ID)
+		if err != nil {
+			return err
+		}
+		if _, err := s.store.PutResult(ctx, tx, res); err != nil {
+			return err
+		}
+		if now.Revision == a.Revision {
+			if err := s.store.SetSetState(ctx, tx, data.Set.ID, db.SetFitted, nil, time.Time{}, a.At); err != nil {
+				return err
+			}
+			if data.Set.Kind == db.KindReference {
+				if err := s.putPoints(ctx, tx, data, res, out, a.At); err != nil {
+					return err
+				}
+			}
+		}
+		return done(ctx, tx)
+	})
+}
+
+// used names what a computation read besides the members, so that it can be
+// repeated from the database alone.
+type used struct {
+	SettingsID    int64              `json:"settings_id"`
+	CalibrationID int64              `json:"calibration_id,omitempty"`
+	ArchiveID     int64              `json:"archive_result_id,omitempty"`
+	MemberIDs     []int64            `json:"member_ids"`
+	Electrode     string             `json:"electrode,omitempty"`
+	Corrections   map[string]float64 `json:"buffer_corrections,omitempty"`
+}
+
+// input gathers everything a computation reads.
+func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *used, error) {
+	set, rules, id := s.current()
+	u := &used{SettingsID: id}
+	in := baseInput(set, data)
+	var first time.Time
+	for _, m := range data.Members {
+		u.MemberIDs = append(u.MemberIDs, m.ID)
+		if m.Scan == nil {
+			continue
+		}
+		in.Solutions = append(in.Solutions, solution(m))
+		if t := m.Scan.Measured; !t.IsZero() && (first.IsZero() || t.Before(first)) {
+			first = t
+		}
+		if r, ok := rules.Rule(m.Rule); ok && m.Role == naming.RoleScan {
+			switch r.Pair {
+			case "name", "inside":
+				in.PHFirst = "name"
+			case "clock":
+				in.PairClock = true
+			}
+		}
+	}
+	if first.IsZero() {
+		first = data.Set.FirstSeen
+	}
+	if err := s.electrodeOf(ctx, in, u, data, first); err != nil {
+		return nil, nil, err
+	}
+	if err := s.archiveOf(ctx, in, u, data); err != nil {
+		return nil, nil, err
+	}
+	ex, err := s.signedExchanges(ctx, data.Set.Key)
+	if err != nil {
+		return nil, nil, err
+	}
+	in.Exchange = ex
+	if in.Calibration != nil {
+		var lots []string
+		for _, p := range in.Calibration.Points {
+			if p.Lot != "" {
+				lots = append(lots, p.Lot)
+			}
+		}
+		if in.Corrections, err = s.corrections(ctx, nil, lots); err != nil {
+			return nil, nil, err
+		}
+		u.Corrections = in.Corrections
+	}
+	return in, u, nil
+}
+
+// baseInput is the part of the input that settings and set give.
+func baseInput(set *settings.Settings, data *db.SetData) *assay.Input {
+	in := &assay.Input{
+		Key: data.Set.Key, Night: data.Set.Night, Lot: data.Set.Lot, Method: set.Method, Budget: set.Budget, Limits: set.Checks,
+		Resources: set.Resources, Home: set.Zone(),
+	}
+	if c, lot, err := set.CompoundOf(data.Set.Name); err == nil && c != nil {
+		in.Compound = c
+		if in.Lot == "" {
+			in.Lot = lot
+		}
+	}
+	if i := set.InstrumentByName(data.Set.Instrument); i != nil {
+		in.Instrument = *i
+	} else {
+		in.Instrument.Name = data.Set.Instrument
+	}
+	for _, r := range data.Readings {
+		in.Readings = append(in.Readings, r.Reading)
+	}
+	for _, r := range set.Rules {
+		if r.Role == naming.RoleCalibration {
+			in.NeedsCalibration = true
+		}
+	}
+	return in
+}
+
+func solution(m db.LoadedMember) assay.Solution {
+	sol := assay.Solution{FileID: m.FileID, ScanID: m.Scan.ID, Role: m.Role, Rung: m.Rung, Rep: m.Rep, PH: math.NaN(), Path: m.Root + "/" + m.Path, Measured: m.Scan.Measured, Scan: m.Scan.Scan}
+	if m.PH != nil {
+		sol.PH = *m.PH
+	}
+	return sol
+}
+
+// electrodeOf finds the electrode that read the pH and its calibration in force.
+func (s *Service) electrodeOf(ctx context.Context, in *assay.Input, u *used, data *db.SetData, at time.Time) error {
+	for _, r := range in.Readings {
+		if r.Electrode != "" {
+			in.Electrode = r.Electrode
+			break
+		}
+	}
+	if in.Electrode == "" {
+		use, err := s.store.ResourceInUse(ctx, nil, data.Set.Instrument, "electrode", at)
+		if err != nil {
+			return err
+		}
+		if use != nil {
+			in.Electrode = use.Resource
+		} else {
+			in.Electrode = in.Instrument.Electrode
+		}
+	}
+	u.Electrode = in.Electrode
+	if in.Electrode == "" {
+		return nil
+	}
+	cal, err := s.store.CalibrationBefore(ctx, nil, in.Electrode, at)
+	if err != nil || cal == nil {
+		return err
+	}
+	u.CalibrationID = cal.ID
+	in.Calibration = &cal.Calibration
+	return nil
+}
+
+// archiveOf finds the archived limit spectra: those of the first reference
+// set of the same lot on the same instrument that was not held.
+func (s *Service) archiveOf(ctx context.Context, in *assay.Input, u *used, data *db.SetData) error {
+	if in.Compound == nil || !in.Compound.Reference {
+		return nil
+	}
+	id, err := s.store.FirstStandingReference(ctx, nil, data.Set.Instrument, data.Set.Compound, data.Set.Lot, data.Set.Night)
+	if err != nil || id == 0 {
+		return err
+	}
+	r, err := s.store.ResultByID(ctx, nil, id)
+	if err != nil {
+		return err
+	}
+	u.ArchiveID = id
+	in.Archive = archiveFrom(r)
+	return nil
+}
+
+func archiveFrom(r *db.Result) *assay.Archive {
+	a := &assay.Archive{Source: fmt.Sprintf("result %d", r.ID), Nominal: spectra.Nominal{AcidNM: zeroNaN(r.LambdaAcidNM), BaseNM: zeroNaN(r.LambdaBaseNM), IsoNM: zeroNaN(r.IsosbesticNM)}}
+	for _, l := range r.Spectra {
+		switch l.Species {
+		case "acid":
+			a.WavelengthNM, a.Acid, a.SDAcid = l.WavelengthNM, l.Value, l.SD
+		case "base":
+			a.Base, a.SDBase = l.Value, l.SD
+		}
+	}
+	if len(a.Acid) == 0 || len(a.Acid) != len(a.Base) {
+		return nil
+	}
+	return a
+}
+
+func zeroNaN(v float64) float64 {
+	if math.IsNaN(v) {
+		return 0
+	}
+	return v
+}
+
+// signedExchanges lists label exchanges that persons have signed for a set.
+func (s *Service) signedExchanges(ctx context.Context, key string) ([][2]string, error) {
+	deeds, err := s.store.Deeds(ctx, nil, key, 1000)
+	if err != nil {
+		return nil, err
+	}
+	var out [][2]string
+	for _, d := range slices.Backward(deeds) {
+		if d.Action != actExchange {
+			continue
+		}
+		var pair [2]string
+		if json.Unmarshal([]byte(d.After), &pair) == nil {
+			out = append(out, pair)
+		}
+	}
+	return out, nil
+}
+
+// record is the calculation record: enough to repeat the computation from the
+// database and to see every step of it.
+type record struct {
+	Program   string            `json:"program"`
+	Used      used              `json:"used"`
+	Prepared  []spectra.Record  `json:"prepared"`
+	LeftOut   []spectra.LeftOut `json:"left_out,omitempty"`
+	Masked    [][2]float64      `json:"masked_nm,omitempty"`
+	Effective float64           `json:"effective_wavelengths"`
+	Grid      [3]float64        `json:"grid_nm"` // first, last, number
+	Fit       any               `json:"fit,omitempty"`
+	WithAll   any               `json:"fit_with_all_rungs,omitempty"`
+	Suspects  []verdict.Suspect `json:"label_suspects,omitempty"`
+	Actions   []string          `json:"actions,omitempty"`
+	Thermo    []string          `json:"thermodynamic,omitempty"`
+	Exchange  [][2]string       `json:"exchanged_labels,omitempty"`
+	Error     string            `json:"error,omitempty"`
+}
+
+// result states an outcome as rows.
+func (s *Service) result(data *db.SetData, in *assay.Input, u *used, out *assay.Outcome, at time.Time) (*db.Result, error) {
+	rec, err := recordOf(in, u, out)
+	if err != nil {
+		return nil, err
+	}
+	r := &db.Result{
+		SetID: data.Set.ID, SetRevision: data.Set.Revision, SettingsID: u.SettingsID, Program: Program(), At: at, By: "pkvigil",
+		Because: because(data.Set), Verdict: string(out.Report.Verdict), Headline: out.Report.Headline(), Constant: "mixed",
+		Steps: 1, TemperatureC: out.TemperatureC, IonicStrength: math.NaN(), Slope: math.NaN(), SlopeSD: math.NaN(), RMS: math.NaN(),
+		LambdaAcidNM: math.NaN(), LambdaBaseNM: math.NaN(), IsosbesticNM: math.NaN(), Ratio: math.NaN(),
+		Record: rec, Figures: map[string]db.Figure{},
+	}
+	if in.Compound != nil {
+		r.Steps = max(1, in.Compound.Steps)
+		if in.Compound.Ionic > 0 {
+			r.IonicStrength = in.Compound.Ionic
+		}
+	}
+	if u.CalibrationID != 0 {
+		r.CalibrationID = &u.CalibrationID
+	}
+	for _, m := range data.Members {
+		if m.Scan != nil && !m.Scan.Measured.IsZero() {
+			t := m.Scan.Measured
+			if r.MeasuredFrom.IsZero() || t.Before(r.MeasuredFrom) {
+				r.MeasuredFrom = t
+			}
+			if t.After(r.MeasuredTo) {
+				r.MeasuredTo = t
+			}
+		}
+	}
+	r.InputSHA256 = inputHash(data, u, in.Exchange)
+	r.Inputs = inputs(data, out)
+	r.Checks = checks(out.Report)
+	if out.Fit != nil && len(out.Constants) > 0 {
+		numbers(r, in, out)
+	} else if r.Verdict != db.NoNumber {
+		return nil, errors.New("a verdict without a number")
+	}
+	for k, f := range out.Figures {
+		r.Figures[k] = db.Figure{Value: f.Value, SD: f.SD, Unit: f.Unit}
+	}
+	return r, nil
+}
+
+func because(d db.Set) string {
+	if d.Revision <= 1 || d.State == db.SetGathering {
+		return "first computation"
+	}
+	return fmt.Sprintf("content of the set changed (revision %d)", d.Revision)
+}
+
+// numbers fills what only a fitted set has.
+func numbers(r *db.Result, in *assay.Input, out *assay.Outcome) {
+	f, p := out.Fit, out.Prepared
+	r.Steps, r.Slope, r.SlopeSD, r.RMS, r.RungsUsed = f.Steps, f.Slope, f.SlopeSD, f.Own.RMS, len(p.Keys)
+	r.LambdaAcidNM, r.LambdaBaseNM, r.IsosbesticNM = out.Bands.LambdaAcid, out.Bands.LambdaBase, out.Bands.LambdaIso
+	if !math.IsNaN(out.Bands.LnRB) {
+		r.Ratio = math.Exp(out.Bands.LnRB)
+	}
+	nan := math.NaN()
+	for _, c := range out.Constants {
+		k := db.PKa{
+			Step: c.Step, PKa: c.PKa, U: c.U, K: c.K, Expanded: c.Expanded, UOwn: c.UOwn, URun: c.URun, ULab: c.ULab, DOF: c.DOF,
+			PKaOwn: c.Own, UPKaOwn: c.UOwnWeighted, Thermo: c.Thermo, UThermo: c.UThermo, ThermoAtC: c.ThermoC,
+			Library: nan, ULibrary: nan, Anchored: nan, UAnchored: nan, Classical: nan, UClassical: nan, Assigned: nan, UAssigned: nan,
+		}
+		if out.Library != nil && c.Step == 1 {
+			k.Library, k.ULibrary = out.Library.PKa, out.Library.U
+		}
+		if out.Classical != nil && c.Step == 1 {
+			k.Classical, k.UClassical = out.Classical.PKa, out.Classical.U
+		}
+		if in.Compound != nil && in.Compound.Assigned != 0 && c.Step == 1 {
+			k.Assigned, k.UAssigned = in.Compound.Assigned, in.Compound.UAssigned
+		}
+		r.PKa = append(r.PKa, k)
+		r.Components = append(r.Components, c.Components...)
+	}
+	n := f.Steps + 1
+	for i, key := range p.Keys {
+		row := db.Rung{Key: key, PHRead: p.PH[i], PHLatent: p.PH[i] + f.Own.Eta[i], Residual: f.Own.Eta[i], U: math.NaN(),
+			AmountFactorPct: 100 * math.Expm1(f.Own.Kappa[i]), BaselineMAU: 1000 * f.Own.Baseline[i]}
+		if len(f.Alpha) == n*len(p.Keys) {
+			row.Alpha = slices.Clone(f.Alpha[i*n : (i+1)*n])
+		}
+		if in.Instrument.SigmaPH > 0 {
+			row.U = in.Instrument.SigmaPH
+		}
+		r.Rungs = append(r.Rungs, row)
+	}
+	for _, l := range out.LeftOut {
+		r.Rungs = append(r.Rungs, db.Rung{Key: l.Key, PHRead: readPH(in.Readings, l.Key), PHLatent: nan, Residual: nan, U: nan, AmountFactorPct: nan, BaselineMAU: nan, LeftOut: true, LeftOutWhy: l.Text})
+	}
+	w := len(p.WavelengthNM)
+	for i := range n {
+		if len(f.Spectra) >= (i+1)*w {
+			l := db.LimitSpectrum{Species: speciesName(i, f.Steps), WavelengthNM: p.WavelengthNM, Value: f.Spectra[i*w : (i+1)*w]}
+			if len(f.SpectraSD) >= (i+1)*w {
+				l.SD = f.SpectraSD[i*w : (i+1)*w]
+			}
+			r.Spectra = append(r.Spectra, l)
+		}
+	}
+}
+
+// speciesName names the forms: acid, base, and those between by number.
+func speciesName(i, steps int) string {
+	switch i {
+	case 0:
+		return "acid"
+	case steps:
+		return "base"
+	}
+	return fmt.Sprintf("intermediate %d", i)
+}
+
+func readPH(rs []parse.Reading, key string) float64 {
+	for _, r := range rs {
+		if naming.RungKey(r.Label) == naming.RungKey(key) {
+			return r.PH
+		}
+	}
+	return math.NaN()
+}
+
+func checks(rep verdict.Report) []db.Check {
+	var out []db.Check
+	for _, c := range rep.Checks {
+		d := db.Check{Key: c.Key, Value: c.Value, LimitLow: math.NaN(), LimitHigh: math.NaN(), Unit: c.Unit, Outcome: string(c.Outcome), Sentence: c.Sentence, Action: c.Action}
+		b := c.Note
+		if c.Outcome == verdict.Held {
+			b = c.Hold
+		}
+		if !math.IsInf(b.Low, 0) {
+			d.LimitLow = b.Low
+		}
+		if !math.IsInf(b.High, 0) {
+			d.LimitHigh = b.High
+		}
+		if c.Unit == "" {
+			d.Value = math.NaN()
+		}
+		out = append(out, d)
+	}
+	return out
+}
+
+// inputs lists every member with whether it was used.
+func inputs(data *db.SetData, out *assay.Outcome) []db.Input {
+	left := map[string]string{}
+	for _, l := range out.LeftOut {
+		left[naming.RungKey(l.Key)] = l.Text
+	}
+	var rows []db.Input
+	for _, m := range data.Members {
+		row := db.Input{FileID: m.FileID, ScanID: m.ScanID, Role: m.Role, Rung: m.Rung, Used: out.Fit != nil}
+		if why, ok := left[naming.RungKey(m.Rung)]; ok && m.Role == naming.RoleScan {
+			row.Used, row.LeftOutWhy = false, why
+		}
+		rows = append(rows, row)
+	}
+	for _, m := range data.Inactive {
+		rows = append(rows, db.Input{FileID: m.FileID, ScanID: m.ScanID, Role: m.Role, Rung: m.Rung, LeftOutWhy: m.LeftOutWhy})
+	}
+	return rows
+}
+
+// inputHash covers the bytes of every member and everything else that was read.
+func inputHash(data *db.SetData, u *used, ex [][2]string) [32]byte {
+	var b strings.Builder
+	for _, m := range data.Members {
+		fmt.Fprintf(&b, "%s|%s|%s|%x|%v\n", m.Role, m.Rung, m.Rep, m.SHA256, m.ScanID != nil)
+	}
+	fmt.Fprintf(&b, "settings %d calibration %d archive %d electrode %s exchange %v buffers %v\n", u.SettingsID, u.CalibrationID, u.ArchiveID, u.Electrode, ex, u.Corrections)
+	return sha256.Sum256([]byte(b.String()))
+}
+
+func recordOf(in *assay.Input, u *used, out *assay.Outcome) (json.RawMessage, error) {
+	rec := record{Program: Program(), Used: *u, LeftOut: out.LeftOut, Suspects: out.Facts.Suspects, Actions: out.Report.Actions, Exchange: in.Exchange}
+	if p := out.Prepared; p != nil {
+		rec.Prepared, rec.Masked, rec.Effective = p.Records, p.Masked, p.Effective
+		if w := len(p.WavelengthNM); w > 0 {
+			rec.Grid = [3]float64{p.WavelengthNM[0], p.WavelengthNM[w-1], float64(w)}
+		}
+	}
+	if out.Fit != nil {
+		rec.Fit = lean(out.Fit)
+	}
+	if out.WithAll != nil {
+		rec.WithAll = lean(out.WithAll)
+	}
+	for _, c := range out.Constants {
+		if c.ThermoText != "" {
+			rec.Thermo = append(rec.Thermo, c.ThermoText)
+		}
+	}
+	if out.Err != nil {
+		rec.Error = out.Err.Error()
+	}
+	return encode(rec)
+}
+
+// lean is a fit without its spectra, which have rows of their own.
+func lean(r *fit.Result) fit.Result {
+	c := *r
+	c.Spectra, c.SpectraSD, c.Residual = nil, nil, nil
+	return c
+}
