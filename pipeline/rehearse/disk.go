@@ -34,9 +34,8 @@ func Prepare(base string) error {
 
 // Apply carries out a deposit that concerns folders below base: writes,
 // renames, removals, shares that go and come back. It reports false for the
-// acts that are the caller's: signatures, the database, settling. A whole file
-// replaces an earlier one in one step; a part is written in place, as a slow
-// writer would.
+// acts that are the caller's: signatures and the database. Files are written in
+// place, as instruments do, so a watcher may well see them half done.
 func Apply(base string, d Deposit) (bool, error) {
 	if d.Folder != "" && !fs.ValidPath(d.Folder) || d.Path != "" && !fs.ValidPath(d.Path) {
 		return false, fmt.Errorf("rehearse: deposit outside its folder: %s/%s", d.Folder, d.Path)

@@ -26,7 +26,8 @@ func (s *Story) Settings(base string) []byte { return s.SettingsWith(base, Wires
 // SettingsWith is Settings with places to send messages to.
 func (s *Story) SettingsWith(base string, to Wires) []byte {
 	w := &tomlWriter{}
-	w.text("# Settings of the invented laboratory Quillmere Indicator Works.\n")
+	w.text("# Settings of the invented laboratory Quillmere Indicator Works.")
+	w.comment = false
 	w.table("laboratory", "name", "Quillmere Indicator Works", "zone", "Europe/Vienna",
 		"night_begins", "18:00", "night_ends", "06:00", "brief_at", "06:30")
 	s.folders(w, base)
@@ -212,16 +213,24 @@ func (s *Story) resources(w *tomlWriter) {
 type raw string
 
 // tomlWriter writes tables in the order given.
-type tomlWriter struct{ b []byte }
+type tomlWriter struct {
+	b       []byte
+	comment bool // the last line is a comment that belongs to the next table
+}
 
-func (w *tomlWriter) text(s string) { w.b = append(append(w.b, s...), '\n') }
+func (w *tomlWriter) text(s string) {
+	w.b = append(append(w.b, s...), '\n')
+	w.comment = strings.HasPrefix(strings.TrimLeft(s, "\n"), "#")
+}
 
 func (w *tomlWriter) table(name string, rows ...any) { w.block("["+name+"]", rows) }
 
 func (w *tomlWriter) list(name string, rows ...any) { w.block("[["+name+"]]", rows) }
 
 func (w *tomlWriter) block(head string, rows []any) {
-	w.b = append(w.b, '\n')
+	if !w.comment {
+		w.b = append(w.b, '\n')
+	}
 	w.text(head)
 	for pair := range slices.Chunk(rows, 2) {
 		w.text(fmt.Sprintf("%s = %s", pair[0], tomlValue(pair[1])))

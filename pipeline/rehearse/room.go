@@ -11,7 +11,8 @@ import (
 func (sc *Scenario) Settings(base string) []byte {
 	w := &tomlWriter{}
 	inst := sc.instrument()
-	w.text("# Settings of a rehearsal.\n")
+	w.text("# Settings of a rehearsal.")
+	w.comment = false
 	w.table("laboratory", "name", "rehearsal", "zone", sc.evening(1).Location().String())
 	w.list("folder", "name", inst, "path", path.Join(base, inst), "instrument", inst, "settle", "2s", "sweep", "5s")
 	w.list("folder", "name", "METERS", "path", path.Join(base, "METERS"), "settle", "2s", "sweep", "5s")
