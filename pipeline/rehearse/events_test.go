@@ -278,7 +278,7 @@ func TestImpureLot(t *testing.T) {
 // The truth made without measuring names the same files as the deposits.
 func TestTruthMatchesDeposits(t *testing.T) {
 	s := NewStory(2)
-	for n := 1; n <= s.Nights(); n += 3 {
+	for n := 1; n <= s.Nights(); n += 4 {
 		paths := map[string]bool{}
 		for _, d := range s.Deposits(n) {
 			paths[d.Folder+"/"+d.Path] = true
