@@ -23,6 +23,9 @@ const (
 // DefaultMaxBytes is the largest input read when Options.MaxBytes is 0.
 const DefaultMaxBytes = 64 << 20
 
+// hardMaxBytes keeps offsets in a text within 32 bits whatever is configured.
+const hardMaxBytes = 1 << 30
+
 const redo = "export the file again, or declare its encoding in a layout"
 
 // CheckSize refuses empty input and input above Options.MaxBytes.
@@ -31,6 +34,7 @@ func CheckSize(name string, data []byte, opt Options) error {
 	if limit <= 0 {
 		limit = DefaultMaxBytes
 	}
+	limit = min(limit, hardMaxBytes)
 	if len(data) == 0 {
 		return &Error{File: name, Found: "an empty file", Expected: "an export", Remedy: "it is read when it grows"}
 	}

@@ -212,10 +212,7 @@ func (r *reader) fromColumns(a *reading, f facts, pre []entry) ([]parse.Scan, er
 	if err != nil {
 		return nil, err
 	}
-	r.found.Columns = make([]string, a.b.cols)
-	for c := range r.found.Columns {
-		r.found.Columns[c] = "skip"
-	}
+	r.found.Columns = slices.Repeat([]string{"skip"}, a.b.cols)
 	scans := make([]parse.Scan, 0, len(traces))
 	for _, t := range traces {
 		s, err := r.scan(a, t, f, pre, len(traces))
@@ -226,6 +223,9 @@ func (r *reader) fromColumns(a *reading, f facts, pre []entry) ([]parse.Scan, er
 		r.found.Columns[t.axis] = "wavelength"
 		r.found.Columns[t.col] = declaredWord(t.quantity)
 		r.found.Ordinate = declaredWord(t.quantity)
+	}
+	if len(r.lay.Columns) > 0 {
+		r.found.Columns, r.found.Ordinate = r.lay.Columns, r.lay.Ordinate
 	}
 	return scans, nil
 }
@@ -409,6 +409,9 @@ func (r *reader) label(a *reading, t trace, f facts, of int) string {
 	}
 	if f.sample != "" {
 		return f.sample
+	}
+	if f.title != "" && of == 1 {
+		return f.title
 	}
 	return head
 }

@@ -21,7 +21,7 @@ func TestExplain(t *testing.T) {
 		"comma": {spectrum(head+"Wavelength (nm),Absorbance\n", "%.1f,%.5f", 41, band), parse.Options{},
 			[]string{"utf-8", "line 5", "41 lines of 2 numbers", "only reading", `"Path length (mm)" is a header line`, "[[layout]]", `abscissa = "nm"`}},
 		"semicolon and comma": {comma(spectrum("Probe;QX\nWellenlänge [nm];Extinktion\n", "%.1f;%.5f", 41, band)), parse.Options{}, []string{`decimal = ","`, `delimiter = ";"`}},
-		"wide": {spectrum("Mode\tAbsorbance\nnm\tS1\tS2\n", "%.1f\t%.5f\t0.25", 41, band), parse.Options{}, []string{`columns = ["wavelength", "absorbance", "absorbance"]`}},
+		"wide":                {spectrum("Mode\tAbsorbance\nnm\tS1\tS2\n", "%.1f\t%.5f\t0.25", 41, band), parse.Options{}, []string{`columns = ["wavelength", "absorbance", "absorbance"]`}},
 		"layout that does not fit": {spectrum("Wavelength (nm),Absorbance\n", "%.1f,%.5f", 41, band), parse.Options{Layouts: []parse.Layout{{Name: "other", Delimiter: ";"}}},
 			[]string{`trying the declared layout "other"`, "does not fit", "only reading"}},
 	} {

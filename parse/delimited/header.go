@@ -51,7 +51,7 @@ func entryOf(d dialect, line []byte, number int) entry {
 		for _, c := range cells[1:] {
 			rest = append(rest, parse.Clean(c))
 		}
-		e.value = strings.Join(rest, string(d.delim)+" ")
+		e.value = strings.Join(rest, strings.TrimLeft(string(rune(d.delim))+" ", "\t"))
 		if len(rest) == 1 {
 			e.value = rest[0]
 		}
@@ -96,6 +96,7 @@ func marker(line []byte) string {
 // facts are what a header says about one scan or table.
 type facts struct {
 	sample       string
+	title        string // stands in where no sample is named
 	instrument   string
 	electrode    string
 	meter        string
@@ -140,6 +141,9 @@ func (r *reader) learn(f *facts, point byte, line int, key, value string) {
 			f.sample = value
 			return
 		}
+		keep()
+	case keyTitle:
+		f.title = value
 		keep()
 	case keyMeasured:
 		r.learnTime(f, line, key, value)

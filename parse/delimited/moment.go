@@ -42,6 +42,9 @@ func moment(text, layout string, zone *time.Location) (t time.Time, zoned bool, 
 		if t, zoned, ok := standard(text, zone); ok {
 			if !zoned {
 				note = doubt(t, zone)
+				if u, _, _ := standard(text, time.UTC); u.Hour() != t.Hour() {
+					note = skipped(text)
+				}
 			}
 			return plausible(t, zoned, note, text)
 		}
@@ -70,7 +73,14 @@ func moment(text, layout string, zone *time.Location) (t time.Time, zoned bool, 
 	if d := doubt(t, zone); !zoned && d != "" {
 		note = d
 	}
+	if !zoned && t.Hour() != h.Hour() {
+		note = skipped(text)
+	}
 	return plausible(t, zoned, note, text)
+}
+
+func skipped(text string) string {
+	return fmt.Sprintf("%s was skipped on the night of the clock change; pair by number, not by time", parse.Show(text))
 }
 
 // standard reads the forms that begin with the year.

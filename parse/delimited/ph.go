@@ -320,6 +320,9 @@ func (r *reader) singlePH() (*parse.Content, error) {
 	}
 	out := blankReading(f)
 	out.PH, out.MilliVolt, out.Label, out.Line = f.ph, f.mv, f.sample, len(r.src.spans)
+	if out.Label == "" {
+		out.Label = f.title
+	}
 	return &parse.Content{Format: "ph-single", Readings: []parse.Reading{out}}, nil
 }
 

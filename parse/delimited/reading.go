@@ -9,10 +9,11 @@ import (
 	"pkvigil/parse"
 )
 
-// Least numbers of points of a spectrum.
+// Least numbers of points of a spectrum, and the most columns.
 const (
 	leastPoints   = 5
 	leastDeclared = 2
+	maxTraces     = 4096 // columns of one file
 )
 
 // A reading is the numeric part of a file under one dialect.
@@ -239,6 +240,9 @@ func (r *reader) sound(a *reading) error {
 	if a.b.rows < least {
 		return r.refuse(a.b.first+1, "", fmt.Sprintf("%d lines of numbers", a.b.rows), fmt.Sprintf("a spectrum of at least %d points", least),
 			"check that this is an export of a scan")
+	}
+	if a.b.cols > maxTraces {
+		return r.refuse(a.b.first+1, "", fmt.Sprintf("%d columns", a.b.cols), fmt.Sprintf("at most %d", maxTraces), "split the export")
 	}
 	for _, c := range a.axes {
 		if a.shape == "pairs" {

@@ -205,6 +205,7 @@ const (
 	keyMeter
 	keyMilliVolt
 	keyAxis
+	keyTitle
 	keyCount
 )
 
@@ -212,7 +213,7 @@ const (
 func headerWords(key int) string {
 	switch key {
 	case keySample:
-		return "sample sample_name sample_id sample_title name title label probe probenname probenbezeichnung echantillon nom_de_l_echantillon muestra nombre campione amostra monster prov probka vzorek образец"
+		return "sample sample_name sample_id sample_title probe probenname probenbezeichnung echantillon nom_de_l_echantillon muestra campione amostra monster prov probka vzorek образец"
 	case keyMeasured:
 		return "measured measured_at measured_on acquired acquired_at date_time datetime date_and_time timestamp time_stamp scan_time scanned scanned_at datum_zeit datum_uhrzeit date_heure fecha_hora recorded recorded_at calibrated calibrated_at calibration_time kalibriert read_at created start_time"
 	case keyDate:
@@ -243,6 +244,8 @@ func headerWords(key int) string {
 		return "meter ph_meter meter_id phmeter ph_messgerat phmetre phmetro"
 	case keyMilliVolt:
 		return "mv e potential emf millivolt spannung reading_mv potentiel potencial"
+	case keyTitle:
+		return "title name label id description titel bezeichnung nombre_de_archivo nom titre titolo"
 	case keyAxis:
 		return "x_axis x_axis_mode xaxis xaxis_mode x_unit x_units xunits x_mode abscissa abszisse x_achse"
 	}
