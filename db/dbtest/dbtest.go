@@ -115,7 +115,7 @@ func fresh(t testing.TB, from string) string {
 	t.Helper()
 	h := get(t)
 	name := fmt.Sprintf("t%d", h.next.Add(1))
-	if err := h.admin(t.Context(), "create database "+name+" template "+from); err != nil {
+	if err := h.admin(t.Context(), "create database "+name+" template "+from+" strategy file_copy"); err != nil {
 		t.Fatal(err)
 	}
 	t.Cleanup(func() {
@@ -203,4 +203,43 @@ func removeStale() {
 			_ = os.RemoveAll(d) // best effort: another binary may be doing the same
 		}
 	}
+}
+
+// A Doomed server belongs to one test, which may kill it.
+type Doomed struct{ *cluster.Server }
+
+// Kill ends the server process with -9. Its supervisor starts it again.
+func (d Doomed) Kill(t testing.TB) {
+	t.Helper()
+	if err := syscall.Kill(d.PID(), syscall.SIGKILL); err != nil {
+		t.Error(err)
+	}
+}
+
+// Own starts a durable server for this test alone and gives its URL; the schema is not there yet.
+func Own(t testing.TB) (Doomed, string) {
+	t.Helper()
+	get(t) // skips when there are no binaries
+	dir, err := os.MkdirTemp("/tmp", "pkvo-")
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := os.Chmod(dir, 0o755); err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() { os.RemoveAll(dir) })
+	ctx, cancel := context.WithTimeout(t.Context(), 90*time.Second)
+	defer cancel()
+	server, err := cluster.Start(ctx, cluster.Config{DataDir: filepath.Join(dir, "d"), Settings: map[string]string{"shared_buffers": "32MB"}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	t.Cleanup(func() {
+		ctx, cancel := context.WithTimeout(context.Background(), 20*time.Second)
+		defer cancel()
+		if err := server.Stop(ctx); err != nil {
+			t.Error(err)
+		}
+	})
+	return Doomed{server}, server.URL()
 }
