@@ -57,7 +57,7 @@ sets of a design and says how often the stated 95 % interval holds the truth.`,
 				}
 			}
 			file := filepath.Join(dir, "pkvigil.toml")
-			if err := os.WriteFile(file, story.Settings(dir), 0o600); err != nil {
+			if err := os.WriteFile(file, story.SettingsWith(dir, rehearse.Wires{DataDir: filepath.Join(dir, "data")}), 0o600); err != nil {
 				return err
 			}
 			fmt.Fprintf(a.out, "%d deposits of nights %d to %d in %s; work them off with: pkvigil once -s %s\n", n, from, to, dir, file)

@@ -154,7 +154,7 @@ func (a *app) runDemo(ctx context.Context, dir string, nights int, seed uint64, 
 	if err := rehearse.Prepare(dir); err != nil {
 		return err
 	}
-	text := story.Settings(dir)
+	text := story.SettingsWith(dir, rehearse.Wires{DataDir: filepath.Join(dir, "data")})
 	a.settings = filepath.Join(dir, "pkvigil.toml")
 	if err := os.WriteFile(a.settings, text, 0o600); err != nil {
 		return err

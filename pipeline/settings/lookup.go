@@ -70,9 +70,9 @@ func (c *Compound) pattern() (*regexp.Regexp, error) {
 	}
 	text := c.Sets
 	if text == "" {
-		text = regexp.QuoteMeta(c.Name) + `(?:[^\pL\pN].*)?`
+		text = `^` + regexp.QuoteMeta(c.Name) + `(?:[^\pL\pN].*)?$`
 	}
-	re, err := regexp.Compile(`^(?:` + text + `)$`)
+	re, err := regexp.Compile(text)
 	if err != nil {
 		return nil, fmt.Errorf("settings: compound %q: sets = %q is no regular expression: %w", c.Name, c.Sets, err)
 	}
