@@ -218,6 +218,9 @@ func TestLockedFileIsTriedAgain(t *testing.T) {
 	if tries < 4 || tries > 12 {
 		t.Fatalf("%d tries in 1000 s; the pauses ought to grow to five minutes", tries)
 	}
+	if s := rep.States[0]; s.Stuck != 1 || s.Settling != 0 {
+		t.Fatalf("%+v", s)
+	}
 	if len(rep.Waits) != 1 || rep.Waits[0].Why != "Cannot read a.csv for 16 min (permission denied)." {
 		t.Fatalf("waits %+v", rep.Waits)
 	}
@@ -519,5 +522,88 @@ func TestNothingIsWritten(t *testing.T) {
 	b.look(time.Minute)
 	if after := picture(); after != before {
 		t.Fatalf("before:\n%s\nafter:\n%s", before, after)
+	}
+}
+
+// asked counts how often size and time of files are asked for.
+type asked struct {
+	disk
+	n int
+}
+
+func (d *asked) list(dir string, each func(fs.DirEntry) error) error {
+	return d.disk.list(dir, func(e fs.DirEntry) error { return each(countingEntry{e, d}) })
+}
+
+type countingEntry struct {
+	fs.DirEntry
+	d *asked
+}
+
+func (e countingEntry) Info() (fs.FileInfo, error) {
+	e.d.n++
+	return e.DirEntry.Info()
+}
+
+// Old files cost a share little, and a change of one is still found: after
+// five minutes at the latest, at once when looks are further apart.
+func TestCalmFilesAreSeldomAsked(t *testing.T) {
+	b := newBench(t, nil)
+	d := &asked{disk: localDisk{}}
+	b.w.roots[0].disk = d
+	for i := range 10 {
+		b.write(fmt.Sprintf("%d.csv", i), "1")
+	}
+	b.look(0)
+	b.done(b.look(5 * time.Second).Files)
+	b.look(time.Second) // takes note of the acknowledgements
+	b.look(2 * time.Hour)
+	d.n = 0
+	for range 40 { // ten minutes
+		b.look(15 * time.Second)
+	}
+	if d.n < 20 || d.n > 30 {
+		t.Errorf("10 calm files were asked %d times in ten minutes, twice or thrice each is enough", d.n)
+	}
+	b.write("3.csv", "rewritten in place")
+	for range 21 {
+		b.look(15 * time.Second)
+	}
+	b.want(b.look(15*time.Second), "3.csv")
+	// A replay moves in larger steps and must miss nothing.
+	b.done(b.look(0).Files)
+	b.look(48 * time.Hour)
+	b.write("5.csv", "corrected two days later")
+	if rep := b.look(6 * time.Minute); gone(rep.Changed) != "5.csv" {
+		t.Errorf("changed %v", rep.Changed)
+	}
+	if err := os.Remove(filepath.Join(b.dir, "7.csv")); err != nil {
+		t.Fatal(err)
+	}
+	if rep := b.look(time.Second); gone(rep.Vanished) != "7.csv" {
+		t.Errorf("vanished %v", rep.Vanished)
+	}
+}
+
+// Another process took files in while this one waited for its lease.
+func TestRecall(t *testing.T) {
+	known := map[string]Stamp{}
+	b := newBench(t, func(_ *Root, o *Options) {
+		o.Known = func(context.Context, string) (map[string]Stamp, error) { return known, nil }
+	})
+	b.write("a.csv", "1")
+	b.date("a.csv", start())
+	b.write("b.csv", "1")
+	b.look(0)
+	b.want(b.look(5*time.Second), "a.csv", "b.csv")
+	known["a.csv"] = Stamp{1, start()}
+	known["b.csv"] = Stamp{1, start()} // with another time: not the same file
+	known["archived.csv"] = Stamp{1, start()}
+	b.want(b.look(time.Second), "a.csv", "b.csv")
+	b.w.Recall("u1")
+	rep := b.look(time.Second)
+	b.want(rep, "b.csv")
+	if len(rep.Vanished) != 0 {
+		t.Errorf("vanished %v", rep.Vanished)
 	}
 }

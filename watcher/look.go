@@ -47,6 +47,16 @@ func (w *Watcher) Done(rootName, path string, size int64, mod time.Time) {
 	}
 }
 
+// Recall has Options.Known asked again before the next look at a root: what
+// another process took in meanwhile is then not offered here.
+func (w *Watcher) Recall(rootName string) {
+	for _, r := range w.roots {
+		if r.Name == rootName {
+			r.recall.Store(true)
+		}
+	}
+}
+
 // Look looks at every root once, in parallel. now is the time of the look: a
 // replay passes its own. A file is offered in Report.Files at each look until
 // Done acknowledges it. A root that does not answer within Options.Answer is
@@ -137,6 +147,7 @@ type root struct {
 	dirs []string // directories found by the last sweep, for the event watches
 
 	events atomic.Bool // event watches are in place
+	recall atomic.Bool // Known is to be asked again
 
 	running chan outcome // the unfinished look; nil: none, and the fields below belong to Look
 	state   State
@@ -168,6 +179,8 @@ type entry struct {
 	stamp   Stamp
 	sweep   int      // last sweep that saw it
 	taken   bool     // acknowledged with this stamp
+	calm    int64    // since when it has been taken unchanged, Unix nanoseconds
+	asked   int64    // when size and time were last asked
 	pending *pending // nil when taken
 }
 
@@ -198,8 +211,8 @@ type outcome struct {
 
 // tally counts what a sweep saw.
 type tally struct {
-	files, settling, litter, skipped int
-	newest                           time.Time
+	files, settling, stuck, litter, skipped int
+	newest                                  time.Time
 }
 
 func (o outcome) addTo(rep *Report) {
@@ -258,7 +271,7 @@ func (r *root) merge(now time.Time, o outcome) State {
 	s := r.publish(now, o.visible, o.why)
 	s.LookedAt = now
 	s.Newest = r.seen.newest
-	s.Files, s.Settling, s.Litter, s.Skipped = r.seen.files, r.seen.settling, r.seen.litter, r.seen.skipped
+	s.Files, s.Settling, s.Stuck, s.Litter, s.Skipped = r.seen.files, r.seen.settling, r.seen.stuck, r.seen.litter, r.seen.skipped
 	s.Events = r.events.Load()
 	r.state = s
 	return s

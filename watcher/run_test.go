@@ -214,7 +214,7 @@ func TestEventStorm(t *testing.T) {
 	ctx, cancel := context.WithTimeout(t.Context(), 20*time.Second)
 	defer cancel()
 	w := New([]Root{{Name: "u1", Path: dir}}, Options{})
-	const n = 6000
+	const n = 2000
 	got := map[string]bool{}
 	wrote := false
 	err := w.Run(ctx, RunOptions{Every: time.Hour}, func(_ context.Context, r Report) error {

@@ -32,33 +32,46 @@ const (
 	// growingLong and emptyLong are when waiting becomes worth a sentence.
 	growingLong = 30 * time.Minute
 	emptyLong   = time.Minute
+	// A file that was taken in and has stood unchanged for calmAfter is asked
+	// for its size and time every askAgain only; its name is looked for in each
+	// sweep. Asking is what costs on a network share: an archive of 200,000
+	// files would keep it busy for ever.
+	calmAfter = time.Hour
+	askAgain  = 5 * time.Minute
 )
 
 // listing is what a sweep of the directories found, before it is compared with
 // what was known.
 type listing struct {
-	files  map[string]Stamp
+	files  map[string]found
 	dirs   []string          // absolute
 	unread map[string]string // relative directory -> why it could not be read
 	links  []string
 	tally
 }
 
+// found is a file of a listing; asked says that the stamp is of now and not
+// carried over.
+type found struct {
+	Stamp
+	asked bool
+}
+
 // look is one look at the root: acknowledgements, visibility, sweep, settling, offers.
 func (r *root) look(ctx context.Context, now time.Time) outcome {
-	if !r.loaded {
-		if err := r.load(ctx); err != nil {
-			return outcome{why: fmt.Sprintf("Folder %s waits: what was taken in earlier cannot be asked (%v).", r.Name, err)}
-		}
-	}
 	var o outcome
 	o.changed = r.acknowledge(now)
+	known, err := r.load(ctx)
+	if err != nil {
+		o.why = fmt.Sprintf("Folder %s waits: what was taken in earlier cannot be asked (%v).", r.Name, err)
+		return o
+	}
 	if o.why = r.blind(); o.why != "" {
 		return o
 	}
 	since := now.Sub(r.sweptAt)
-	if !(r.more && since >= 0 && since < sweepStands) {
-		l, err := r.list(ctx)
+	if !(r.more && known == nil && since >= 0 && since < sweepStands) {
+		l, err := r.list(ctx, now)
 		switch {
 		case ctx.Err() != nil:
 			o.aborted = true
@@ -72,6 +85,7 @@ func (r *root) look(ctx context.Context, now time.Time) outcome {
 			return o
 		}
 		r.compare(now, l, &o)
+		r.takenElsewhere(known, now)
 		r.settle(now, l)
 		r.waiting = r.waits(now, l)
 	}
@@ -81,19 +95,42 @@ func (r *root) look(ctx context.Context, now time.Time) outcome {
 	return o
 }
 
-// load asks once what was taken in before.
-func (r *root) load(ctx context.Context) error {
-	if r.opt.Known != nil {
-		known, err := r.opt.Known(ctx, r.Name)
-		if err != nil {
-			return err
-		}
-		for p, s := range known {
+// load asks what was taken in before: at the first look, and when told to
+// recall. What a recall gives is returned for takenElsewhere.
+func (r *root) load(ctx context.Context) (map[string]Stamp, error) {
+	recall := r.recall.Swap(false)
+	if (r.loaded && !recall) || r.opt.Known == nil {
+		r.loaded = true
+		return nil, nil
+	}
+	known, err := r.opt.Known(ctx, r.Name)
+	if err != nil {
+		r.recall.Store(recall)
+		return nil, err
+	}
+	if r.loaded {
+		return known, nil
+	}
+	for p, s := range known {
+		if e := r.entries[p]; e == nil { // Done may have been quicker
 			r.entries[p] = &entry{stamp: s, taken: true}
 		}
 	}
 	r.loaded = true
-	return nil
+	return nil, nil
+}
+
+// takenElsewhere acknowledges what another process took in with the stamp it has now.
+func (r *root) takenElsewhere(known map[string]Stamp, now time.Time) {
+	for p, s := range known {
+		if e := r.entries[p]; e != nil && !e.taken && e.stamp.same(s) {
+			e.take(now)
+		}
+	}
+}
+
+func (e *entry) take(now time.Time) {
+	e.taken, e.pending, e.calm = true, nil, now.UnixNano()
 }
 
 // acknowledge applies what Done said. A file that changed after it was offered
@@ -108,9 +145,9 @@ func (r *root) acknowledge(now time.Time) []Gone {
 		e := r.entries[a.path]
 		switch {
 		case e == nil:
-			r.entries[a.path] = &entry{stamp: a.stamp, taken: true, sweep: r.sweeps}
+			r.entries[a.path] = &entry{stamp: a.stamp, taken: true, sweep: r.sweeps, calm: now.UnixNano()}
 		case e.stamp.same(a.stamp):
-			e.taken, e.pending = true, nil
+			e.take(now)
 		default:
 			changed = append(changed, Gone{Root: r.Name, Path: a.path, Stamp: a.stamp, Taken: true})
 		}
@@ -165,9 +202,9 @@ func (r *root) present() int {
 
 // list sweeps the directories. An unreadable directory below the root is
 // noted; only the root's own failure is an error.
-func (r *root) list(ctx context.Context) (*listing, error) {
-	l := &listing{files: make(map[string]Stamp, len(r.entries)), unread: map[string]string{}}
-	if err := r.listDir(ctx, "", 0, l); err != nil {
+func (r *root) list(ctx context.Context, now time.Time) (*listing, error) {
+	l := &listing{files: make(map[string]found, len(r.entries)), unread: map[string]string{}}
+	if err := r.listDir(ctx, "", 0, l, now); err != nil {
 		return nil, err
 	}
 	r.mu.Lock()
@@ -176,7 +213,7 @@ func (r *root) list(ctx context.Context) (*listing, error) {
 	return l, nil
 }
 
-func (r *root) listDir(ctx context.Context, rel string, depth int, l *listing) error {
+func (r *root) listDir(ctx context.Context, rel string, depth int, l *listing, now time.Time) error {
 	abs := filepath.Join(r.Path, filepath.FromSlash(rel))
 	l.dirs = append(l.dirs, abs)
 	var below []string
@@ -193,6 +230,8 @@ func (r *root) listDir(ctx context.Context, rel string, depth int, l *listing) e
 		case name == r.MarkerFile:
 		case isLitter(d.Name(), r.Ignore):
 			l.litter++
+		case d.Type().IsRegular() && r.entries[name].resting(now):
+			l.note(name, found{r.entries[name].stamp, false})
 		default:
 			l.add(name, d)
 		}
@@ -206,7 +245,7 @@ func (r *root) listDir(ctx context.Context, rel string, depth int, l *listing) e
 			l.unread[b] = fmt.Sprintf("more than %d folders deep", deepest)
 			continue
 		}
-		if err := r.listDir(ctx, b, depth+1, l); err != nil {
+		if err := r.listDir(ctx, b, depth+1, l, now); err != nil {
 			if ctx.Err() != nil {
 				return ctx.Err()
 			}
@@ -232,11 +271,24 @@ func (l *listing) add(name string, d fs.DirEntry) {
 		}
 		return
 	}
-	l.files[name] = stampOf(fi)
+	l.note(name, found{stampOf(fi), true})
+}
+
+func (l *listing) note(name string, s found) {
+	l.files[name] = s
 	l.tally.files++
-	if fi.ModTime().After(l.newest) {
-		l.newest = fi.ModTime()
+	if s.Mod.After(l.newest) {
+		l.newest = s.Mod
 	}
+}
+
+// resting reports whether a file need not be asked for its size and time in this sweep.
+func (e *entry) resting(now time.Time) bool {
+	if e == nil || !e.taken || e.calm == 0 {
+		return false
+	}
+	calm, asked := now.UnixNano()-e.calm, now.UnixNano()-e.asked
+	return calm >= int64(calmAfter) && asked >= 0 && asked < int64(askAgain)
 }
 
 // compare brings the entries up to what the sweep saw.
@@ -244,31 +296,43 @@ func (r *root) compare(now time.Time, l *listing, o *outcome) {
 	r.sweeps++
 	r.sweptAt = now
 	var fresh []string
-	for p, s := range l.files {
+	for p, f := range l.files {
 		e := r.entries[p]
-		switch {
-		case e == nil:
-			r.entries[p] = &entry{stamp: s, sweep: r.sweeps, pending: &pending{first: now, since: now, sweep: r.sweeps}}
+		if e == nil {
+			e = &entry{stamp: f.Stamp, pending: &pending{first: now, since: now, sweep: r.sweeps}}
+			r.entries[p] = e
 			fresh = append(fresh, p)
-			continue
-		case e.stamp.same(s):
-			if d := e.pending; d != nil && d.since.After(now) {
-				d.since, d.retry = now, now // our clock was put back
-			}
-		default:
-			if e.taken {
-				o.changed = append(o.changed, Gone{Root: r.Name, Path: p, Stamp: e.stamp, Taken: true})
-			}
-			first := now
-			if e.pending != nil {
-				first = e.pending.first
-			}
-			e.stamp, e.taken = s, false
-			e.pending = &pending{first: first, since: now, sweep: r.sweeps}
+		} else {
+			r.update(p, e, f, now, o)
 		}
 		e.sweep = r.sweeps
+		if f.asked {
+			e.asked = now.UnixNano()
+		}
 	}
 	r.departed(fresh, l, o)
+}
+
+// update compares a file that was known with what the sweep saw.
+func (r *root) update(p string, e *entry, f found, now time.Time, o *outcome) {
+	if e.stamp.same(f.Stamp) {
+		if e.taken && e.calm == 0 {
+			e.calm = now.UnixNano()
+		}
+		if d := e.pending; d != nil && d.since.After(now) {
+			d.since, d.retry = now, now // our clock was put back
+		}
+		return
+	}
+	if e.taken {
+		o.changed = append(o.changed, Gone{Root: r.Name, Path: p, Stamp: e.stamp, Taken: true})
+	}
+	began := now
+	if e.pending != nil {
+		began = e.pending.first
+	}
+	e.stamp, e.taken, e.calm = f.Stamp, false, 0
+	e.pending = &pending{first: began, since: now, sweep: r.sweeps}
 }
 
 // departed finds what is gone, and what only changed the spelling of its name.
@@ -330,9 +394,15 @@ func (r *root) settle(now time.Time, l *listing) {
 		if e.taken || e.sweep != r.sweeps {
 			continue
 		}
-		if r.still(p, e, now) {
+		switch {
+		case !e.pending.denied.IsZero(), e.stamp.Size == 0 && now.Sub(e.pending.since) >= emptyLong:
+			r.seen.stuck++
+			if e.stamp.Size > 0 {
+				r.ready = append(r.ready, readyFile{p, e})
+			}
+		case r.still(p, e, now):
 			r.ready = append(r.ready, readyFile{p, e})
-		} else {
+		default:
 			r.seen.settling++
 		}
 	}

@@ -45,6 +45,7 @@ type State struct {
 	Newest   time.Time // newest modification time seen
 	Files    int       // files seen in the last look, litter not counted
 	Settling int       // of these, not settled yet
+	Stuck    int       // of these, empty or locked for longer than is usual; not counted in Settling
 	Litter   int       // temporary and lock files ignored
 	Skipped  int       // links, pipes and devices, which are never opened
 	Events   bool      // the operating system tells of changes here; without it only the timer looks

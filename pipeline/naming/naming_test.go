@@ -2,6 +2,7 @@ package naming
 
 import (
 	"errors"
+	"fmt"
 	"strings"
 	"testing"
 	"time"
@@ -204,6 +205,27 @@ func TestNearest(t *testing.T) {
 	ladder := []KnownSet{{Set: "CRR-104", Rungs: []string{"1", "2"}, Ladder: []string{"1", "2", "3"}}}
 	if g := Nearest("u1", "CRR-l04_r09.csv", rs, ladder); g.Set != "" {
 		t.Errorf("rung 9 is not in the ladder: %+v", g)
+	}
+}
+
+// A lot renamed by one or two characters anywhere must find its way back, among
+// thousands of other sets.
+func TestNearestAmongThousands(t *testing.T) {
+	rs, err := Compile([]Rule{{Name: "qc", Pattern: `(?P<set>\p{L}{2,6}-\d{4})_r(?P<rung>\d{2})\.csv`}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	known := []KnownSet{{Set: "Grün-7777", Rungs: []string{"01"}}}
+	for i := range 3000 {
+		known = append(known, KnownSet{Set: fmt.Sprintf("%s-%04d", []string{"TB", "CRR", "PHR"}[i%3], 3*i%9973), Rungs: []string{"01", "02", "03"}})
+	}
+	for path, set := range map[string]string{"Griin-7777_r05.csv": "Grün-7777", "Grun-7777_r05.csv": "Grün-7777", "Grün7777_r05.csv": "Grün-7777"} {
+		if g := Nearest("u1", path, rs, known); g.Set != set {
+			t.Errorf("%s: %+v", path, g)
+		}
+	}
+	if g := Nearest("u1", "TB-3OO0_r04.csv", rs, append(known, KnownSet{Set: "TB-3000", Rungs: []string{"01"}})); g.Set != "TB-3000" || g.Distance != 2 {
+		t.Errorf("%+v", g)
 	}
 }
 

@@ -57,7 +57,8 @@ type search struct {
 	known        []KnownSet
 	tried        map[string]bool
 	best         Suggestion
-	eye          bool // all differences of best are look-alikes or separators
+	eye          bool  // all differences of best are look-alikes or separators
+	bytes        []int // how often each byte stands in the path
 }
 
 // tokens replaces each piece of the path that nearly reads like a known set by
@@ -65,7 +66,7 @@ type search struct {
 func (s *search) tokens() {
 	r := []rune(s.path)
 	for _, k := range s.known {
-		if k.Folder != "" && k.Folder != s.folder {
+		if (k.Folder != "" && k.Folder != s.folder) || !s.couldHold(k.Set) {
 			continue
 		}
 		name := []rune(k.Set)
@@ -80,6 +81,37 @@ func (s *search) tokens() {
 			}
 		}
 	}
+}
+
+// couldHold reports whether at most two bytes of a set's name are missing from
+// the path, in whatever order: thousands of sets are passed over this way
+// without comparing them piece by piece.
+func (s *search) couldHold(set string) bool {
+	if s.bytes == nil {
+		s.bytes = make([]int, 256)
+		for i := range len(s.path) {
+			s.bytes[s.path[i]]++
+		}
+	}
+	var used [256]int
+	missing := 0
+	for i := range len(set) {
+		c := set[i]
+		if used[c]++; used[c] > s.bytes[c] {
+			missing++
+		}
+	}
+	// A character outside ASCII has up to four bytes.
+	return missing <= maxDistance || (missing <= 4*maxDistance && !isASCII(set+s.path))
+}
+
+func isASCII(s string) bool {
+	for i := range len(s) {
+		if s[i] >= 0x80 {
+			return false
+		}
+	}
+	return true
 }
 
 // edits tries every single change that hands and eyes make: a look-alike, a
