@@ -318,6 +318,9 @@ func (r *reader) singlePH() (*parse.Content, error) {
 	if f.ph < lowestPH || f.ph > highestPH {
 		return nil, r.refuse(0, "pH", fmt.Sprintf("%g", f.ph), "pH between -2 and 16", "the value looks like millivolts; export pH")
 	}
+	if r.src.open {
+		r.remark(len(r.src.spans), "the file does not end with a line end; whether its last number is whole cannot be told")
+	}
 	out := blankReading(f)
 	out.PH, out.MilliVolt, out.Label, out.Line = f.ph, f.mv, f.sample, len(r.src.spans)
 	if out.Label == "" {

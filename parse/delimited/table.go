@@ -378,26 +378,3 @@ func (r *reader) tableFacts(t *table) facts {
 	r.settle(&f)
 	return f
 }
-
-// cutTable refuses a table whose last row lacks its end.
-func (r *reader) cutTable(t *table) error {
-	if !r.src.open || len(t.rows) < 2 {
-		return nil
-	}
-	last := t.rows[len(t.rows)-1]
-	if last.line != len(r.src.spans) {
-		return nil
-	}
-	prev := t.rows[len(t.rows)-2]
-	if len(last.cells) < len(prev.cells) {
-		return r.cutShort(last.line-1, len(prev.cells))
-	}
-	c := len(last.cells) - 1
-	_, k := t.d.number(last.cells[c])
-	_, kp := t.d.number(prev.cells[min(c, len(prev.cells)-1)])
-	if k >= 0 && kp > k {
-		return r.cutShort(last.line-1, len(prev.cells))
-	}
-	r.remark(last.line, "the file does not end with a line end")
-	return nil
-}
