@@ -271,6 +271,12 @@ func (r *reader) broken(a *reading) error {
 			return r.cutShort(next, a.b.cols)
 		}
 	}
+	if next < len(r.src.spans) && r.almost(a, next, false) {
+		return r.damaged(next, a.b.cols)
+	}
+	if before := a.b.first - 1; before >= 0 && before != a.header && r.lay.FirstLine == 0 && r.almost(a, before, true) {
+		return r.damaged(before, a.b.cols)
+	}
 	for _, o := range a.g.blocks {
 		after := o.first > a.b.last && o.first-a.b.last <= 3 && (o.cols > 1 || o.first == next)
 		if after && !r.unbroken(next, o.first) {
@@ -286,6 +292,24 @@ func (r *reader) broken(a *reading) error {
 		}
 	}
 	return nil
+}
+
+// almost tells whether a line beside the table looks like one of its rows
+// that could not be read; strict asks that only its first field could not.
+func (r *reader) almost(a *reading, line int, strict bool) bool {
+	cells := a.d.split(r.src.line(line), nil)
+	for len(cells) > a.b.cols && len(cells[len(cells)-1]) == 0 {
+		cells = cells[:len(cells)-1]
+	}
+	if len(cells) != a.b.cols || !dataish(cells[0]) {
+		return false
+	}
+	for _, c := range cells[1:] {
+		if _, k := a.d.number(c); strict && k == cellText {
+			return false
+		}
+	}
+	return true
 }
 
 // unbroken tells whether a blank line or a new head stands among the lines

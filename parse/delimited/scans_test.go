@@ -395,3 +395,70 @@ func TestHeaderFacts(t *testing.T) {
 		}
 	}
 }
+
+// TestThousands reads grouped numbers where that is the only reading, or a
+// layout says so.
+func TestThousands(t *testing.T) {
+	var mixed, spaced, apostrophe strings.Builder
+	mixed.WriteString("Wavelength (nm)\tAbsorbance\n")
+	spaced.WriteString("Wellenlänge (nm);Extinktion\n")
+	apostrophe.WriteString("nm;A\n")
+	for i := range 41 {
+		x := fmt.Sprintf("%d", 980+i)
+		if i >= 20 {
+			x = fmt.Sprintf("1,%03d", 980+i-1000)
+		}
+		fmt.Fprintf(&mixed, "%s.5\t%.5f\n", x, band(i))
+		fmt.Fprintf(&spaced, "%s,5;%s\n", strings.ReplaceAll(x, ",", "\u00a0"), comma(fmt.Sprintf("%.5f", band(i))))
+		fmt.Fprintf(&apostrophe, "%s.5;%.5f\n", strings.ReplaceAll(x, ",", "'"), band(i))
+	}
+	for name, x := range map[string]struct {
+		text string
+		opt  parse.Options
+	}{
+		"point and comma":     {mixed.String(), parse.Options{}},
+		"declared":            {mixed.String(), declared(parse.Layout{Thousands: ","})},
+		"no-break space":      {spaced.String(), declared(parse.Layout{Thousands: "space"})},
+		"declared apostrophe": {apostrophe.String(), declared(parse.Layout{Thousands: "'", Ordinate: "absorbance"})},
+	} {
+		c := mustRead(t, x.text, x.opt)
+		s := c.Scans[0]
+		if len(s.WavelengthNM) != 41 || s.WavelengthNM[0] != 980.5 || s.WavelengthNM[40] != 1020.5 || math.Abs(s.Absorbance[40]-band(40)) > 1e-5 {
+			t.Errorf("%s: %d points from %g to %g", name, len(s.WavelengthNM), s.WavelengthNM[0], s.WavelengthNM[len(s.WavelengthNM)-1])
+		}
+	}
+	for cell, want := range map[string]float64{"1,234.5": 1234.5, "12,345,678": 12345678, "-1,000.25": -1000.25, "999.5": 999.5} {
+		if v, k := (dialect{delim: '\t', point: '.', thousands: ','}).number([]byte(cell)); v != want || k < 0 {
+			t.Errorf("%q is %g", cell, v)
+		}
+	}
+	for _, cell := range []string{"1,23.4", "1234,567", ",123", "1,,234", "12,34", "1,234,5", "1,2345.6"} {
+		if v, k := (dialect{delim: '\t', point: '.', thousands: ','}).number([]byte(cell)); k != cellText {
+			t.Errorf("%q is read as %g", cell, v)
+		}
+	}
+}
+
+// TestQuotes undoes RFC 4180 quotes.
+func TestQuotes(t *testing.T) {
+	d := dialect{delim: ',', point: '.'}
+	for line, want := range map[string][]string{
+		`a,b`:             {"a", "b"},
+		`"a,b",c`:         {"a,b", "c"},
+		`"say ""no""",""`: {`say "no"`, ""},
+		` "a" , b `:       {"a", "b"},
+		`"open,b`:         {"open,b"},
+		`a"b,c`:           {`a"b`, "c"},
+		`,`:               {"", ""},
+		`"""",x`:          {`"`, "x"},
+		`"a" junk,b`:      {"a", "b"},
+	} {
+		var got []string
+		for _, f := range d.split([]byte(line), nil) {
+			got = append(got, string(f))
+		}
+		if !slices.Equal(got, want) {
+			t.Errorf("%s: %q, want %q", line, got, want)
+		}
+	}
+}

@@ -96,11 +96,21 @@ func (r *reader) table(want string) *table {
 // wordy tells whether a line begins like one of heads and not like one of data.
 func wordy(line []byte) bool {
 	line = bytes.TrimLeft(line, " \t\"")
-	if len(line) == 0 {
-		return false
+	return len(line) > 0 && !dataish(line)
+}
+
+// dataish tells whether text begins like a number.
+func dataish(text []byte) bool {
+	for i, c := range text {
+		switch {
+		case c-'0' <= 9:
+			return true
+		case i < 2 && (c == '-' || c == '+' || c == '.' || c == ','):
+			continue
+		}
+		return bytes.HasPrefix(text, []byte("\u2212"))
 	}
-	c := line[0]
-	return c != '-' && c != '+' && c != '.' && c-'0' > 9
+	return false
 }
 
 func classOf(want, found string) string {
