@@ -111,6 +111,27 @@ func substances() []substance {
 		{names: []string{"tetroxalate", "kh3(c2o4)2"}, acid: "oxalate", moles: 2, strong: []strongIon{ion("K+", 1)}},
 		{names: []string{"khp", "potassium hydrogen phthalate"}, acid: "phthalate", moles: 1, strong: []strongIon{ion("K+", 1)}},
 	}
+	list = append(list, carboxylates()...)
+	for _, base := range []string{"tris", "bis-tris", "imidazole"} {
+		list = append(list,
+			substance{names: []string{base}, acid: base, moles: 1},
+			substance{names: []string{base + " hcl"}, acid: base, moles: 1, strong: []strongIon{ion("Cl-", 1)}})
+	}
+	for _, zwitterion := range []string{"mes", "mops", "hepes", "ches", "caps"} {
+		list = append(list,
+			substance{names: []string{zwitterion}, acid: zwitterion, moles: 1},
+			substance{names: []string{"sodium " + zwitterion}, acid: zwitterion, moles: 1, strong: []strongIon{ion("Na+", 1)}})
+	}
+	list = append(list,
+		substance{names: []string{"sodium pipes"}, acid: "pipes", moles: 1, strong: []strongIon{ion("Na+", 1)}},
+		substance{names: []string{"disodium pipes"}, acid: "pipes", moles: 1, strong: []strongIon{ion("Na+", 2)}},
+		substance{names: []string{"glycine"}, acid: "glycine", moles: 1, strong: nil})
+	return list
+}
+
+// carboxylates lists acids and their salts: "acetic acid", "disodium hydrogen citrate".
+func carboxylates() []substance {
+	var list []substance
 	acids := []struct {
 		acid, formal string
 		salts        int
@@ -128,24 +149,10 @@ func substances() []substance {
 				if h := a.salts - n; h > 0 {
 					word += prefix[h-1] + "hydrogen "
 				}
-				list = append(list, substance{names: []string{word + a.acid}, acid: a.acid, moles: 1, strong: []strongIon{ion(metal.ion, float64(n))}})
+				list = append(list, substance{names: []string{word + a.acid}, acid: a.acid, moles: 1, strong: []strongIon{{metal.ion, float64(n)}}})
 			}
 		}
 	}
-	for _, base := range []string{"tris", "bis-tris", "imidazole"} {
-		list = append(list,
-			substance{names: []string{base}, acid: base, moles: 1},
-			substance{names: []string{base + " hcl"}, acid: base, moles: 1, strong: []strongIon{ion("Cl-", 1)}})
-	}
-	for _, zwitterion := range []string{"mes", "mops", "hepes", "ches", "caps"} {
-		list = append(list,
-			substance{names: []string{zwitterion}, acid: zwitterion, moles: 1},
-			substance{names: []string{"sodium " + zwitterion}, acid: zwitterion, moles: 1, strong: []strongIon{ion("Na+", 1)}})
-	}
-	list = append(list,
-		substance{names: []string{"sodium pipes"}, acid: "pipes", moles: 1, strong: []strongIon{ion("Na+", 1)}},
-		substance{names: []string{"disodium pipes"}, acid: "pipes", moles: 1, strong: []strongIon{ion("Na+", 2)}},
-		substance{names: []string{"glycine"}, acid: "glycine", moles: 1, strong: nil})
 	return list
 }
 

@@ -13,6 +13,17 @@ import (
 // outside opens a table of published figures that lies beside the module, or skips.
 func outside(t *testing.T, name string) [][]string {
 	t.Helper()
+	return table(t, "check-values", "chemistry", name)
+}
+
+// outsideData opens a real file that lies beside the module, or skips.
+func outsideData(t *testing.T, folder, name string) [][]string {
+	t.Helper()
+	return table(t, "data", "real", folder, name)
+}
+
+func table(t *testing.T, parts ...string) [][]string {
+	t.Helper()
 	dir, err := os.Getwd()
 	if err != nil {
 		t.Fatal(err)
@@ -27,9 +38,9 @@ func outside(t *testing.T, name string) [][]string {
 		}
 		dir = up
 	}
-	f, err := os.Open(filepath.Join(dir, "..", "shared", "check-values", "chemistry", name))
+	f, err := os.Open(filepath.Join(append([]string{dir, "..", "shared"}, parts...)...))
 	if err != nil {
-		t.Skipf("the folder of published figures is not here: %v", err)
+		t.Skipf("the folder of outside figures is not here: %v", err)
 	}
 	defer f.Close()
 	var rows [][]string

@@ -80,7 +80,7 @@ func FractionsGrad(alpha, dPH, dPKa []float64, pH float64, pKa []float64) {
 // MeanProtonsLost is the mean number of protons lost at one pH, 0..n.
 func MeanProtonsLost(pH float64, pKa []float64) float64 {
 	var room [8]float64
-	alpha := room[:0]
+	var alpha []float64
 	if len(pKa) < len(room) {
 		alpha = room[:len(pKa)+1]
 	} else {

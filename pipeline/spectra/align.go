@@ -40,6 +40,9 @@ func (p *preparation) align() {
 			r := &p.rows[i]
 			now := total[i] + delta[i]
 			r.shift = now
+			if math.Abs(now) < alignSure*sd[i] {
+				r.shift = total[i] // not sure: nothing, or what was mended before
+			}
 			if !p.opt.Align || math.Abs(now) > alignMost || math.Abs(delta[i]) < math.Max(alignSure*sd[i], alignSeen/(1+2*float64(round))) {
 				continue
 			}
@@ -133,31 +136,10 @@ func (p *preparation) displacement() (delta, sd []float64) {
 		}
 		rhs[i] = -dot(r[i*w:(i+1)*w], g[i*w:(i+1)*w])
 	}
-	var eig mat.EigenSym
-	if !eig.Factorize(normal, true) {
-		return nil, nil
-	}
-	values := eig.Values(nil)
-	var vec mat.Dense
-	eig.VectorsTo(&vec)
-	largest := values[m-1]
-	if largest <= 0 {
-		return nil, nil
-	}
-	delta, sd = make([]float64, m), make([]float64, m)
 	variance := dot(r, r) / float64(max(1, (m-f.k)*(w-len(q))))
-	for c := range m {
-		if values[c] < 1e-6*largest {
-			continue
-		}
-		b := 0.0
-		for i := range m {
-			b += vec.At(i, c) * rhs[i]
-		}
-		for i := range m {
-			delta[i] += vec.At(i, c) * b / values[c]
-			sd[i] += vec.At(i, c) * vec.At(i, c) * variance / values[c]
-		}
+	delta, sd = pseudoSolve(normal, rhs, variance)
+	if delta == nil {
+		return nil, nil
 	}
 	// The zero of the displacements is where half of the colour lies on either side.
 	weight := make([]float64, m)
@@ -168,12 +150,45 @@ func (p *preparation) displacement() (delta, sd []float64) {
 	most := math.Sqrt(slices.Max(weight))
 	for i := range m {
 		delta[i] -= zero
-		sd[i] = math.Sqrt(sd[i])
 		if !flanksAgree(r[i*w:(i+1)*w], g[i*w:(i+1)*w], most) {
 			delta[i] = 0
 		}
 	}
 	return delta, sd
+}
+
+// pseudoSolve solves a symmetric system without its null directions; sd are the
+// standard deviations for a residual variance. Nil when the system is empty.
+func pseudoSolve(normal *mat.SymDense, rhs []float64, variance float64) (x, sd []float64) {
+	m := len(rhs)
+	var eig mat.EigenSym
+	if !eig.Factorize(normal, true) {
+		return nil, nil
+	}
+	values := eig.Values(nil)
+	var vec mat.Dense
+	eig.VectorsTo(&vec)
+	if !(values[m-1] > 0) {
+		return nil, nil
+	}
+	x, sd = make([]float64, m), make([]float64, m)
+	for c := range m {
+		if values[c] < 1e-6*values[m-1] {
+			continue
+		}
+		b := 0.0
+		for i := range m {
+			b += vec.At(i, c) * rhs[i]
+		}
+		for i := range m {
+			x[i] += vec.At(i, c) * b / values[c]
+			sd[i] += vec.At(i, c) * vec.At(i, c) * variance / values[c]
+		}
+	}
+	for i := range sd {
+		sd[i] = math.Sqrt(sd[i])
+	}
+	return x, sd
 }
 
 // weightedMedian is the smallest value at which half of the weight is reached.

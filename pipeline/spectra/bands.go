@@ -135,25 +135,15 @@ type localPoly struct {
 // of x0, with weights that fall to zero at the edge of the window: as the window
 // follows a maximum, points come and go without a jump.
 func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
-	lo := sort.SearchFloat64s(x, x0-1.25*half)
-	hi := sort.SearchFloat64s(x, x0+1.25*half)
-	// A sparse grid still needs five points.
-	for hi-lo < 5 && (lo > 0 || hi < len(x)) {
-		if lo > 0 && (hi >= len(x) || x0-x[lo-1] <= x[hi]-x0) {
-			lo--
-		} else {
-			hi++
-		}
-	}
 	var p localPoly
-	order := 3
+	lo, hi := localWindow(x, x0, half)
+	k := 4
 	if hi-lo < 7 {
-		order = 2
+		k = 3
 	}
 	if hi-lo < 4 {
 		return p
 	}
-	k := order + 1
 	scale := math.Max(x[hi-1]-x0, x0-x[lo])
 	if scale <= 0 {
 		return p
@@ -163,7 +153,7 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 	if hi-lo <= 6 {
 		edge = 1.25 * scale
 	}
-	var nrm [4][4]float64
+	var nrm, mid [4][4]float64
 	var rhs [4]float64
 	used := 0
 	for i := lo; i < hi; i++ {
@@ -173,10 +163,15 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 		used++
 		basis := powers((x[i] - x0) / scale)
 		weight := taper((x[i] - x0) / edge)
+		noise := 0.0
+		if sd != nil {
+			noise = weight * weight * sd[i] * sd[i]
+		}
 		for a := range k {
 			rhs[a] += weight * basis[a] * y[i]
 			for b := range k {
 				nrm[a][b] += weight * basis[a] * basis[b]
+				mid[a][b] += noise * basis[a] * basis[b]
 			}
 		}
 	}
@@ -189,37 +184,29 @@ func fitLocal(x, y, sd []float64, x0, half float64) localPoly {
 	for a := range k {
 		for b := range k {
 			p.c[a] += inv[a][b] * rhs[b] * unit[a]
-		}
-	}
-	if sd == nil {
-		return p
-	}
-	// The weights are not those of the noise: the covariance is the sandwich.
-	var mid [4][4]float64
-	for i := lo; i < hi; i++ {
-		if math.IsNaN(y[i]) {
-			continue
-		}
-		weight := taper((x[i] - x0) / edge)
-		basis := powers((x[i] - x0) / scale)
-		for a := range k {
-			for b := range k {
-				mid[a][b] += weight * weight * basis[a] * basis[b] * sd[i] * sd[i]
-			}
-		}
-	}
-	for a := range k {
-		for b := range k {
-			s := 0.0
+			// The weights are not those of the noise: the covariance is the sandwich.
 			for c := range k {
 				for d := range k {
-					s += inv[a][c] * mid[c][d] * inv[d][b]
+					p.cov[a][b] += inv[a][c] * mid[c][d] * inv[d][b] * unit[a] * unit[b]
 				}
 			}
-			p.cov[a][b] = s * unit[a] * unit[b]
 		}
 	}
 	return p
+}
+
+// localWindow gives the points within 1.25 half of x0, at least five where there are five.
+func localWindow(x []float64, x0, half float64) (lo, hi int) {
+	lo = sort.SearchFloat64s(x, x0-1.25*half)
+	hi = sort.SearchFloat64s(x, x0+1.25*half)
+	for hi-lo < 5 && (lo > 0 || hi < len(x)) {
+		if lo > 0 && (hi >= len(x) || x0-x[lo-1] <= x[hi]-x0) {
+			lo--
+		} else {
+			hi++
+		}
+	}
+	return lo, hi
 }
 
 // taper is one at the centre and zero with its slope at one.

@@ -171,9 +171,13 @@ func (p *preparation) scatter() {
 		side = fmt.Sprintf("up to pH %.1f", onset)
 	}
 	p.record("scan.precip", "", largest, "absorbance", "A rise as λ^-%.1f towards short wavelengths of up to %.0f mAU at 500 nm shows %s: particles or a precipitate.", power, 1000*largest, side)
-	if !p.opt.Scatter {
-		return
+	if p.opt.Scatter {
+		p.removeScatter(cols, size, power)
 	}
+}
+
+// removeScatter subtracts the rise found from each scan.
+func (p *preparation) removeScatter(cols []int, size []float64, power float64) {
 	for i := range p.rows {
 		r := &p.rows[i]
 		mean := 0.0

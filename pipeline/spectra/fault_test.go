@@ -195,7 +195,7 @@ func faultTable() []fault {
 					y[j] = math.Round(y[j]*100) / 100
 				}
 			}
-		}, record: "scan.coarse", value: func(r Record, p *Prepared) error {
+		}, record: "digits.coarse", value: func(r Record, p *Prepared) error {
 			if n := rms(p.NoiseWave); math.Abs(r.Value-0.01/math.Sqrt(12)) > 1e-9 || n < 0.0028 || n > 0.0036 {
 				return fmt.Errorf("step %g noise %g", r.Value, n)
 			}

@@ -30,6 +30,7 @@ func (p *preparation) dropClones() {
 			default:
 				text = fmt.Sprintf("%s holds the same numbers as %s.", r.key, p.rows[twin].key)
 				p.record("scan.clone", r.key, 1, "", "%s", text)
+				p.out.Records[len(p.out.Records)-1].Other = p.rows[twin].key
 			}
 		}
 		r.scans = kept
@@ -94,7 +95,7 @@ func (p *preparation) dropLightless() {
 
 // dropColourless leaves out scans without a dye band whose neighbours in pH
 // have one. A form without colour at the end of a ladder is not a fault: there
-// the band fades tenfold per pH unit and step at most.
+// the band fades tenfold per pH unit and step, two steps at least allowed for.
 func (p *preparation) dropColourless(blanks bool) {
 	m := len(p.rows)
 	if m < 3 {
@@ -120,7 +121,7 @@ func (p *preparation) dropColourless(blanks bool) {
 			continue
 		}
 		expected := func(o int) float64 {
-			return height[o] * math.Pow(10, -float64(p.opt.Forms-1)*math.Abs(p.rows[i].ph-p.rows[o].ph))
+			return height[o] * math.Pow(10, -float64(max(p.opt.Forms-1, 2))*math.Abs(p.rows[i].ph-p.rows[o].ph))
 		}
 		least := math.Inf(1)
 		if at > 0 {

@@ -256,7 +256,7 @@ func (p *preparation) floorNoise() {
 		}
 	}
 	if digits > 0 && digits > 0.5*mean || coarsest >= 0 && coarsest <= 2 {
-		p.record("scan.coarse", "", digits, "absorbance", "Absorbances have %d decimals; their step adds %.2g mAU of noise.", coarsest, 1000*digits)
+		p.record("digits.coarse", "", digits, "absorbance", "Absorbances have %d decimals; their step adds %.2g mAU of noise.", coarsest, 1000*digits)
 	}
 	if 2*raised > len(p.out.NoiseWave) && p.opt.SigmaA > 0 {
 		p.record("noise.declared", "", floor, "absorbance", "The noise found (%.2g mAU) is below the declared one; %.2g mAU is used.", 1000*mean, 1000*floor)

@@ -233,6 +233,9 @@ func TestClones(t *testing.T) {
 	if len(p.LeftOut) != 1 || p.LeftOut[0] != (LeftOut{"r06", "scan.clone", "r06 holds the same numbers as r05."}) {
 		t.Errorf("left out %+v", p.LeftOut)
 	}
+	if r, ok := find(p.Records, "scan.clone"); !ok || r.Rung != "r06" || r.Other != "r05" {
+		t.Errorf("clone: %+v", r)
+	}
 	if r, ok := find(p.Records, "scan.repeated"); !ok || r.Rung != "r08" {
 		t.Errorf("repeated scan: %+v", p.Records)
 	}

@@ -43,6 +43,7 @@ type Options struct {
 type Record struct {
 	Key   string  `json:"key"` // "blank.subtracted", "grid.coarsest", "mask.ceiling", "clear.offset", "scan.smoothed", ...
 	Rung  string  `json:"rung,omitempty"`
+	Other string  `json:"other,omitempty"` // the second rung where two are concerned
 	Value float64 `json:"value"`
 	Unit  string  `json:"unit,omitempty"`
 	Text  string  `json:"text"` // sentence
@@ -64,7 +65,7 @@ type Prepared struct {
 	ClearMean   float64      // absorbance
 	ClearTrend  float64      // absorbance over the whole run
 	BlankSD     [3]float64   // blue, centre, red; NaN without a blank
-	ShiftNM     []float64    // m, displacement of each scan found within the set
+	ShiftNM     []float64    // m, displacement of each scan found within the set, before it was mended; 0 where none is sure
 	MaxA        float64      // highest absorbance seen in the range
 	LostInfo    float64      // share of the colour change lost to masks, 0..1
 	BestChange  float64      // largest colour change left, absorbance
