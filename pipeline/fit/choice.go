@@ -36,7 +36,9 @@ type Choice struct {
 // next only if (a) a further component exceeds the noise edge or the misfit of
 // the present model is improbable (p < 0.01), (b) a corrected information
 // criterion improves by more than 6, (c) the new spectra are not negative
-// beyond doubt and (d) every new pKa lies inside the ladder +-0.5.
+// beyond doubt and (d) every new pKa lies inside the ladder +-0.5. A model that
+// improves but still does not explain the set is passed through on the way to
+// the next, and is not offered as the answer.
 //
 // The criterion is that of Akaike with the correction of Hurvich & Tsai (1989)
 // on rungs and not on wavelengths: the two models are compared on the n+2
@@ -87,11 +89,22 @@ func ModelChoice(p Problem, maxSteps int) (*Choice, error) {
 			break
 		}
 	}
-	last := out.Models[out.Steps-1]
-	if last.P < 0.01 {
+	for out.Steps > 1 && !out.Models[out.Steps-1].adequate() {
+		// A better model that is still wrong is no answer.
+		m := &out.Models[out.Steps-1]
+		m.Accepted, m.Reason = false, m.Reason+", but it does not explain the set either"
+		out.Steps--
+	}
+	if last := out.Models[out.Steps-1]; last.P < 0.01 {
 		out.Warning = fmt.Sprintf("No model up to %d steps explains the set within its stated errors (p = %.2g): more than these equilibria, or a wrong pH axis.", len(out.Models), last.P)
 	}
 	return out, nil
+}
+
+// adequate reports whether the misfit can be lived with: not improbable, or
+// not beyond what stated errors too small by a factor of 1.4 would give.
+func (mod *Model) adequate() bool {
+	return !(mod.P < 0.001) || mod.Misfit <= 2*float64(mod.DOF)
 }
 
 // inspect fills what can be read off the result.
