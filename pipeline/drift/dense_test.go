@@ -11,8 +11,8 @@ import (
 // denseWorld is the same Gaussian model written as plain dense algebra: one big
 // covariance over all numbers of all cells and nights.
 type denseWorld struct {
-	l   *look
-	at  [][]int // per cell and observation: first row
+	l *look
+
 	n   int
 	v   *mat.SymDense
 	y   *mat.VecDense

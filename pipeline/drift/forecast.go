@@ -56,8 +56,8 @@ func ForecastExit(nights []Night, values, sd []float64, low, high float64, now N
 	cross := func(k float64) Night { // first night on which line + k sd is outside
 		for x := 0; x <= 400; x++ {
 			t := float64(x)
-			s := math.Sqrt(vaa + 2*vab*t + vbb*t*t)
-			if dir*(a+b*t-limit)+k*s >= 0 {
+			s := math.Sqrt(math.Max(0, vaa+2*vab*t+vbb*t*t))
+			if dir*(a+b*t-limit)+k*s >= -1e-9*math.Abs(limit) { // a limit met exactly is met
 				return now + Night(x)
 			}
 		}

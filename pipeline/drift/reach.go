@@ -106,8 +106,11 @@ func (l *look) effect(c Candidate, r ResultFacts) (mean, bound float64, why stri
 		return 0, 0, fmt.Sprintf("did not use %v", c.Resource)
 	}
 	f := l.sensitivity(tr, r)
-	if f == [2]float64{} {
-		return 0, 0, tr.Title + " does not reach a pKa whose spectra are free"
+	if math.Abs(f[0])+math.Abs(f[1]) < 1e-12 {
+		if tr.Optical || tr.Harmless {
+			return 0, 0, tr.Title + ": does not reach a pKa whose spectra are free"
+		}
+		return 0, 0, tr.Title + ": does not act on this ladder"
 	}
 	theta := [2]float64{c.Theta[0]}
 	cov := [3]float64{c.ThetaCov[0]}

@@ -9,11 +9,11 @@ import (
 
 // a trace is the course of one characteristic against what a cause predicts.
 type trace struct {
-	cell, j       int
-	predicted     float64 // on the last night the cause showed
-	observed      float64
-	sd            float64
-	inScope, used bool
+	cell, j   int
+	predicted float64 // on the last night the cause showed
+	observed  float64
+	sd        float64
+	inScope   bool
 }
 
 // traces estimates, for every cell observed since the onset, how large each
