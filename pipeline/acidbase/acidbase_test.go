@@ -210,7 +210,7 @@ func TestSpeciateProperties(t *testing.T) {
 		names := SubstanceNames()
 		var recipe []Ingredient
 		for range rapid.IntRange(1, 4).Draw(t, "parts") {
-			recipe = append(recipe, Ingredient{rapid.SampledFrom(names).Draw(t, "name"), rapid.Float64Range(1e-4, 0.05).Draw(t, "amount")})
+			recipe = append(recipe, Ingredient{Name: rapid.SampledFrom(names).Draw(t, "name"), Molar: rapid.Float64Range(1e-4, 0.05).Draw(t, "amount")})
 		}
 		c := rapid.Float64Range(5, 45).Draw(t, "t")
 		s, err := Speciate(recipe, c, RecipeOption{})
@@ -229,7 +229,7 @@ func TestSpeciateProperties(t *testing.T) {
 			t.Fatalf("%v: charge %g, ionic strength %g against %g", recipe, charge, ionic, s.Ionic)
 		}
 		// More strong base never lowers the pH.
-		more, err := Speciate(append(recipe, Ingredient{"naoh", 1e-3}), c, RecipeOption{})
+		more, err := Speciate(append(recipe, Ingredient{Name: "naoh", Molar: 1e-3}), c, RecipeOption{})
 		if err != nil {
 			t.Fatal(err)
 		}

@@ -354,3 +354,36 @@ func TestRecipes(t *testing.T) {
 	}
 	near(t, "pure water", water.PH, PKwAt(25)/2, 1e-6)
 }
+
+// TestRecipeSlopes: temperature coefficients at 25 °C of Bates's standards and
+// of TRIS (-0.028 /K, handbook figure).
+func TestRecipeSlopes(t *testing.T) {
+	for recipe, want := range map[string]float64{
+		"KH2PO4 0.025, Na2HPO4 0.025": -0.0028, "borax 0.01": -0.0082, "NaHCO3 0.025, Na2CO3 0.025": -0.0096,
+		"khp 0.05": 0.0012, "TRIS 0.02, TRIS HCl 0.02": -0.028,
+	} {
+		in, err := ParseRecipe(recipe)
+		if err != nil {
+			t.Fatal(err)
+		}
+		got, err := RecipeSlope(in, 25, RecipeOption{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		near(t, recipe, got, want, 0.0009)
+	}
+}
+
+// Uncertainty of the amounts: of a 1:1 buffer log10 e times the relative
+// uncertainty of each, less what the ionic strength does: 3 A f'(0.1) = 0.94
+// per mol/kg.
+func TestRecipeUncertainty(t *testing.T) {
+	in, _ := ParseRecipe("KH2PO4 0.025, Na2HPO4 0.025")
+	in[0].URel, in[1].URel = 0.01, 0.02
+	s, err := Speciate(in, 25, RecipeOption{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	near(t, "u(pH)", s.URecipe, math.Hypot(0.01/math.Ln10+0.94*0.025*0.01, 0.02/math.Ln10-0.94*0.075*0.02), 0.0001)
+	near(t, "u(I)", s.UIonic, math.Hypot(0.025*0.01, 0.075*0.02), 2e-5)
+}

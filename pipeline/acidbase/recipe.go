@@ -11,6 +11,7 @@ import (
 type Ingredient struct {
 	Name  string  // "KH2PO4", "sodium acetate", "TRIS HCl"; SubstanceNames lists them
 	Molar float64 // amount per litre or per kg of water
+	URel  float64 // relative standard uncertainty of the amount; 0: taken as exact
 }
 
 // ParseRecipe reads "KH2PO4 0.025, Na2HPO4 0.025": substances with amounts in
@@ -31,7 +32,7 @@ func ParseRecipe(text string) ([]Ingredient, error) {
 		if _, ok := substanceNamed(name); !ok {
 			return nil, fmt.Errorf("recipe part %q: substance %q is not known; known are %s", part, name, strings.Join(SubstanceNames(), ", "))
 		}
-		out = append(out, Ingredient{name, v})
+		out = append(out, Ingredient{Name: name, Molar: v})
 	}
 	if len(out) == 0 {
 		return nil, fmt.Errorf("recipe %q is empty; expected for example \"KH2PO4 0.025, Na2HPO4 0.025\"", text)
@@ -72,6 +73,8 @@ type Solution struct {
 	PH         float64 // activity scale of the model
 	UModel     float64 // standard uncertainty of PH from the activity model
 	Ionic      float64 // ionic strength, unit of the recipe
+	UIonic     float64 // standard uncertainty of Ionic from the amounts
+	URecipe    float64 // standard uncertainty of PH from the amounts
 	Capacity   float64 // buffer value, d(strong base)/d pH
 	Species    []Species
 	Model      Model
@@ -115,15 +118,64 @@ func Speciate(recipe []Ingredient, tC float64, o RecipeOption) (*Solution, error
 	if err != nil {
 		return nil, err
 	}
+	out, err := mix.solve()
+	if err != nil {
+		return nil, err
+	}
+	// Errors of the amounts are independent; each is propagated by a small change.
+	const part = 1e-4
+	moved := append([]Ingredient(nil), recipe...)
+	var pH, ionic float64
+	for i, in := range recipe {
+		if in.URel <= 0 || in.Molar <= 0 {
+			continue
+		}
+		moved[i].Molar = in.Molar * (1 + part)
+		if mix, err = mixed(moved, tC, o); err != nil {
+			return nil, err
+		}
+		with, err := mix.solve()
+		if err != nil {
+			return nil, err
+		}
+		moved[i].Molar = in.Molar
+		dp, di := (with.PH-out.PH)/part*in.URel, (with.Ionic-out.Ionic)/part*in.URel
+		pH, ionic = pH+dp*dp, ionic+di*di
+	}
+	out.URecipe, out.UIonic = math.Sqrt(pH), math.Sqrt(ionic)
+	return out, nil
+}
+
+// RecipeSlope is the temperature coefficient of a recipe's pH in 1/K at tC.
+func RecipeSlope(recipe []Ingredient, tC float64, o RecipeOption) (float64, error) {
+	const h = 0.5
+	var pH [2]float64
+	for i, t := range [2]float64{tC - h, tC + h} {
+		mix, err := mixed(recipe, t, o)
+		if err != nil {
+			return 0, err
+		}
+		s, err := mix.solve()
+		if err != nil {
+			return 0, err
+		}
+		pH[i] = s.PH
+	}
+	return (pH[1] - pH[0]) / (2 * h), nil
+}
+
+// solve finds pH and ionic strength.
+func (m *mixture) solve() (*Solution, error) {
+	o := m.option
 	ionic, step := 0.0, math.Inf(1)
-	out := &Solution{Model: o.Model, A: mix.a}
+	out := &Solution{Model: o.Model, A: m.a}
 	for out.Iterations = 1; out.Iterations <= 200; out.Iterations++ {
-		pH, ok := mix.balance(ionic)
+		pH, ok := m.balance(ionic)
 		if !ok {
 			return nil, fmt.Errorf("recipe: no pH between -2 and 16 balances the charges at I = %.3g; check the amounts", ionic)
 		}
 		out.PH = pH
-		out.Species = mix.species(pH, ionic)
+		out.Species = m.species(pH, ionic)
 		next := 0.0
 		for _, s := range out.Species {
 			next += s.Conc * float64(s.Charge*s.Charge) / 2
@@ -138,8 +190,8 @@ func Speciate(recipe []Ingredient, tC float64, o RecipeOption) (*Solution, error
 		if step <= 1e-13+1e-12*ionic {
 			out.Ionic = ionic
 			out.Beyond = o.Model.Check(ionic) != nil
-			out.Capacity = mix.capacity(pH, ionic)
-			out.UModel = o.Model.ModelUncertainty(mix.multiple(pH, ionic), ionic)
+			out.Capacity = m.capacity(pH, ionic)
+			out.UModel = o.Model.ModelUncertainty(m.multiple(pH, ionic), ionic)
 			return out, nil
 		}
 	}
