@@ -385,6 +385,7 @@ func (s *Service) progress(ctx context.Context, tx pgx.Tx, o db.OpenSet, now tim
 		exp.Silence, exp.Deadline = 0, 0
 	}
 	state, missing := naming.Completeness(exp, p, now)
+	s.due.Store(o.ID, dueAt{o.Revision, naming.LookAgain(exp, p, now)})
 	switch state {
 	case naming.Complete:
 		if err := s.store.SetSetState(ctx, tx, o.ID, db.SetComplete, nil, time.Time{}, now); err != nil {
@@ -395,6 +396,23 @@ func (s *Service) progress(ctx context.Context, tx pgx.Tx, o db.OpenSet, now tim
 		return s.store.SetSetState(ctx, tx, o.ID, db.SetWaiting, lackList(missing), o.LastSeen.Add(exp.Deadline), now)
 	}
 	return s.store.SetSetState(ctx, tx, o.ID, db.SetGathering, lackList(missing), o.LastSeen.Add(exp.Deadline), now)
+}
+
+// dueAt is when the passing of time alone may move a set of a revision on.
+type dueAt struct {
+	revision int
+	at       time.Time // zero: never
+}
+
+// mayMove says whether looking at an open set now can change anything: this
+// process has not looked at its revision yet, or its moment has come.
+func (s *Service) mayMove(o db.OpenSet, now time.Time) bool {
+	v, ok := s.due.Load(o.ID)
+	if !ok || s.final.Load() {
+		return true
+	}
+	d := v.(dueAt)
+	return d.revision != o.Revision || (!d.at.IsZero() && !now.Before(d.at))
 }
 
 // expectation is what makes a set whole: the profile and the settings say.

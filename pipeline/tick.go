@@ -9,6 +9,7 @@ import (
 
 	"github.com/jackc/pgx/v5"
 
+	"pkvigil/db"
 	"pkvigil/pipeline/alert"
 	"pkvigil/pipeline/naming"
 	"pkvigil/pipeline/settings"
@@ -59,8 +60,12 @@ func (s *Service) overdue(now time.Time) bool {
 // tickSets moves open sets on.
 func (s *Service) tickSets(ctx context.Context, now time.Time) error {
 	open, err := s.store.OpenSets(ctx, nil)
-	if err != nil || len(open) == 0 {
+	if err != nil {
 		return err
+	}
+	open = slices.DeleteFunc(open, func(o db.OpenSet) bool { return !s.mayMove(o, now) })
+	if len(open) == 0 {
+		return nil
 	}
 	return s.store.InTx(ctx, func(tx pgx.Tx) error {
 		var ids []int64

@@ -5,6 +5,8 @@ import (
 	"math"
 	"slices"
 	"strings"
+
+	"gonum.org/v1/gonum/stat/distuv"
 )
 
 func (j *judge) optics(f Facts) {
@@ -47,6 +49,14 @@ func (j *judge) optics(f Facts) {
 	}
 }
 
+// blankNoise is the noise of the subtracted blank, nil where there was none.
+func blankNoise(f Facts) []float64 {
+	if f.Prepared == nil {
+		return nil
+	}
+	return f.Prepared.BlankNoise
+}
+
 func (j *judge) components(f Facts) {
 	r := f.Fit
 	if n := r.Steps + 1; r.NoiseEdge > 0 && len(r.Singular) > n {
@@ -61,7 +71,7 @@ func (j *judge) components(f Facts) {
 		}
 		j.finding("second.dye", o, fmt.Sprintf("About %.0f %% of a second dye, pKa near %.1f.", 100*f.SecondDyeShare, f.SecondDyePKa), "Check the purity of the lot before its pKa is released.")
 	}
-	if top, depth := negativeDepth(r.Spectra, r.SpectraSD); top > 0 {
+	if top, depth := negativeDepth(r.Spectra, r.SpectraSD, blankNoise(f)); top > 0 {
 		j.number("spectra.negative", depth/top, "1", fmt.Sprintf("A limiting spectrum goes below zero by %.1f mAU beyond its noise.", 1000*depth), "Wrong blank, or dye in the blank: measure the blank again.")
 	}
 	if !math.IsNaN(f.LibraryDiff) && f.LibraryDiff != 0 {
@@ -69,13 +79,25 @@ func (j *judge) components(f Facts) {
 	}
 }
 
-// negativeDepth returns the top of the spectra and how far any point lies below minus three of its standard deviations.
-func negativeDepth(s, sd []float64) (top, depth float64) {
+// negativeDepth returns the top of the spectra and how far any point lies
+// below its noise: three standard deviations for one point, so the quantile
+// that keeps the same chance over all points. The noise of the blank is common
+// to all rungs; free spectra take it up, and it belongs to theirs here.
+func negativeDepth(s, sd, blank []float64) (top, depth float64) {
+	if len(s) == 0 {
+		return 0, 0
+	}
+	z := distuv.UnitNormal.Quantile(1 - 0.00135/float64(len(s)))
 	for i, v := range s {
 		top = math.Max(top, v)
-		if i < len(sd) {
-			depth = math.Max(depth, -v-3*sd[i])
+		if i >= len(sd) {
+			continue
 		}
+		u := sd[i]
+		if len(blank) > 0 {
+			u = math.Hypot(u, blank[i%len(blank)])
+		}
+		depth = math.Max(depth, -v-z*u)
 	}
 	return top, depth
 }

@@ -201,7 +201,9 @@ func (j *judge) latentPH(f Facts) {
 		}
 		s := "No rung left out."
 		if len(names) > 0 {
-			s = fmt.Sprintf("%s left out: %s", strings.Join(names, ", "), f.LeftOut[0].Text)
+			if s = f.LeftOut[0].Text; len(names) > 1 || !strings.HasPrefix(s, names[0]) {
+				s = fmt.Sprintf("%s left out: %s", strings.Join(names, ", "), s)
+			}
 		}
 		j.number("rung.out", float64(len(f.LeftOut))/float64(f.Rungs), "1", s, "Prepare and scan again: "+strings.Join(names, ", ")+".")
 	}
