@@ -36,6 +36,17 @@ type cell struct {
 // NewModel computes the fingerprints of all causes in all cells (est as in
 // Fingerprint) and prepares the covariances.
 func NewModel(cells []Cell, rules Rules, est Estimator) (*Model, error) {
+	return newModel(cells, rules, est, nil)
+}
+
+// Renew makes the model of other cells under the same rules, and takes over the fingerprints of
+// those whose design and characteristics have not changed: baselines and
+// covariances may have. est must be the estimator m was made with.
+func (m *Model) Renew(cells []Cell, est Estimator) (*Model, error) {
+	return newModel(cells, m.rules, est, m)
+}
+
+func newModel(cells []Cell, rules Rules, est Estimator, old *Model) (*Model, error) {
 	m := &Model{rules: DefaultRules(rules), byKey: map[string]int{}}
 	for _, t := range Traits() {
 		if rules.Causes == nil || slices.Contains(rules.Causes, t.Cause) {
@@ -50,13 +61,50 @@ func NewModel(cells []Cell, rules Rules, est Estimator) (*Model, error) {
 		if err != nil {
 			return nil, err
 		}
-		if err := p.print(m.traits, est); err != nil {
-			return nil, fmt.Errorf("fingerprints of %s: %w", c.Key, err)
+		if p.cols = old.prints(&p); p.cols == nil {
+			if err := p.print(m.traits, est); err != nil {
+				return nil, fmt.Errorf("fingerprints of %s: %w", c.Key, err)
+			}
 		}
 		m.byKey[c.Key] = len(m.cells)
 		m.cells = append(m.cells, p)
 	}
 	return m, nil
+}
+
+// prints finds the fingerprints of an equal cell, nil if there is none.
+func (m *Model) prints(p *cell) [][]float64 {
+	if m == nil {
+		return nil
+	}
+	i, ok := m.byKey[p.Key]
+	if !ok {
+		return nil
+	}
+	o := &m.cells[i]
+	if o.Kind != p.Kind || !slices.Equal(o.Characteristics, p.Characteristics) || !sameDesign(o.Design, p.Design) {
+		return nil
+	}
+	for j, ch := range p.Characteristics {
+		if ch.NormLike() && o.Cell.Centre[j] != p.Cell.Centre[j] {
+			return nil
+		}
+	}
+	return o.cols
+}
+
+func sameDesign(a, b *Design) bool {
+	if a == b || a == nil || b == nil {
+		return a == b
+	}
+	x, y := *a, *b
+	same := slices.Equal(x.Ladder, y.Ladder) && slices.Equal(x.WavelengthNM, y.WavelengthNM) && slices.Equal(x.Acid, y.Acid) &&
+		slices.Equal(x.Base, y.Base) && slices.Equal(x.Buffers, y.Buffers) && maps.Equal(x.Centre, y.Centre)
+	numbers := func(d Design) [14]float64 {
+		return [14]float64{d.PKa, float64(d.Charge), d.Ionic, d.DPKaDT, d.DPHDT, d.TemperatureC, d.CO2Above, d.BandwidthNM,
+			d.Minus, d.Band, d.SigmaPH, d.UAmount, d.UBaseline, d.SigmaA}
+	}
+	return same && numbers(x) == numbers(y)
 }
 
 // prepare shrinks the correlations, widens for the degrees of freedom and
