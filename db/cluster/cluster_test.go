@@ -6,6 +6,7 @@ import (
 	"bytes"
 	"context"
 	"errors"
+	"net"
 	"os"
 	"os/exec"
 	"path/filepath"
@@ -293,17 +294,44 @@ func TestClosedParent(t *testing.T) {
 	}
 }
 
+// TestLongPath runs below a path too long for a socket, as nobody when root
+// starts it, with TCP for readers.
 func TestLongPath(t *testing.T) {
 	dir := filepath.Join(shortDir(t), strings.Repeat("long", 22))
-	s := start(t, Config{DataDir: dir, Settings: small()})
+	l, err := net.Listen("tcp", "127.0.0.1:0")
+	if err != nil {
+		t.Fatal(err)
+	}
+	listen := l.Addr().String()
+	l.Close()
+	cfg := Config{DataDir: dir, Listen: listen, Settings: small()}
+	if os.Geteuid() == 0 {
+		cfg.Account = "nobody"
+	}
+	s := start(t, cfg)
 	if n := len(s.SocketDir()); n > s.place.maxSocketDir() {
 		t.Errorf("socket folder %s has %d bytes, want at most %d", s.SocketDir(), n, s.place.maxSocketDir())
 	}
-	if got := query(t, s.URL(), "select 'answers'"); got != "answers" {
-		t.Errorf("got %q", got)
-	}
 	run := s.SocketDir()
 	t.Cleanup(func() { os.RemoveAll(run) })
+	exec1(t, s.URL(), "create role pkvigil_reader nologin")
+	exec1(t, s.URL(), "create role dash login password 'for-the-test' in role pkvigil_reader")
+	if got := query(t, "postgres://dash:for-the-test@"+listen+"/pkvigil?sslmode=disable", "select current_user::text"); got != "dash" {
+		t.Errorf("reader over TCP is %q", got)
+	}
+	if got := query(t, strings.Replace(s.URL(), "pkvigil@", "dash:for-the-test@", 1), "select current_user::text"); got != "dash" {
+		t.Errorf("reader over the socket is %q", got)
+	}
+	for _, url := range []string{
+		"postgres://dash:wrong@" + listen + "/pkvigil?sslmode=disable",
+		"postgres://pkvigil@" + listen + "/pkvigil?sslmode=disable", // the owner has no business on TCP
+		strings.Replace(s.URL(), "pkvigil@", "dash@", 1),
+	} {
+		if conn, err := pgx.Connect(t.Context(), url); err == nil {
+			conn.Close(context.Background())
+			t.Errorf("let in: %s", url)
+		}
+	}
 	if _, err := Start(t.Context(), Config{DataDir: dir, RunDir: dir}); err == nil || !strings.Contains(err.Error(), "shorter") {
 		t.Errorf("long run folder: got %v, want a refusal", err)
 	}

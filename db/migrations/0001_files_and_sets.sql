@@ -78,7 +78,7 @@ CREATE TABLE pkvigil.file (
     late         boolean     NOT NULL,
     settings_id  bigint REFERENCES pkvigil.settings,
     UNIQUE (root, path, revision),
-    CHECK (state <> 'refused' OR reason ->> 'sentence' <> ''),
+    CHECK (state <> 'refused' OR coalesce(reason ->> 'sentence', '') <> ''),
     CHECK (state <> 'twin' OR twin_of IS NOT NULL),
     CHECK ((revision = 1) = (replaces IS NULL))
 );
@@ -290,6 +290,7 @@ CREATE TABLE pkvigil.member (
     CHECK (active OR left_out_why <> '')
 );
 CREATE INDEX member_file ON pkvigil.member (file_id);
+CREATE INDEX member_scan ON pkvigil.member (scan_id) WHERE scan_id IS NOT NULL;
 
 CREATE TRIGGER kept BEFORE UPDATE OR DELETE ON pkvigil.content FOR EACH ROW EXECUTE FUNCTION pkvigil.refuse_change();
 CREATE TRIGGER kept BEFORE UPDATE OR DELETE ON pkvigil.settings FOR EACH ROW EXECUTE FUNCTION pkvigil.refuse_change();

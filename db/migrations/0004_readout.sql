@@ -12,29 +12,25 @@ SELECT r.root, NULLIF(r.instrument, '') AS instrument, r.visible, NULLIF(r.why, 
        r.settling AS files_settling, r.complete_up_to, l.host AS swept_by_host, l.pid AS swept_by_process
 FROM pkvigil.root_state r LEFT JOIN pkvigil.root_lease l ON l.root = r.root;
 
+-- One branch per kind of row and one GROUP BY, so that a condition on night reaches the indexes.
 CREATE VIEW readout.nights AS
-WITH planned AS (
-    SELECT p.night, p.instrument, count(DISTINCT (p.set_name, p.slot)) AS n
-    FROM pkvigil.plan_row p JOIN pkvigil.file_newest f ON f.id = p.file_id GROUP BY 1, 2
-), seen AS (
-    SELECT s.night, s.instrument, count(*) AS n,
-           count(*) FILTER (WHERE s.kind = 'reference') AS refs,
-           count(*) FILTER (WHERE t.verdict = 'stands') AS stands,
-           count(*) FILTER (WHERE t.verdict = 'stands-noted') AS stands_noted,
-           count(*) FILTER (WHERE t.verdict = 'held') AS held,
-           count(*) FILTER (WHERE t.verdict = 'no number') AS no_number,
-           count(*) FILTER (WHERE s.state = 'waiting') AS waiting,
-           count(*) FILTER (WHERE s.state = 'gathering') AS gathering,
-           count(*) FILTER (WHERE t.verdict = 'in-question') AS in_question
+SELECT x.night, x.instrument, sum(x.planned)::int AS sets_planned, sum(x.seen)::int AS sets_seen, sum(x.ref)::int AS references_seen,
+       (count(*) FILTER (WHERE x.verdict = 'stands'))::int AS stands,
+       (count(*) FILTER (WHERE x.verdict = 'stands-noted'))::int AS stands_noted,
+       (count(*) FILTER (WHERE x.verdict = 'held'))::int AS held,
+       (count(*) FILTER (WHERE x.verdict = 'no number'))::int AS no_number,
+       (count(*) FILTER (WHERE x.state = 'waiting'))::int AS waiting,
+       (count(*) FILTER (WHERE x.state = 'gathering'))::int AS gathering,
+       (count(*) FILTER (WHERE x.verdict = 'in-question'))::int AS in_question
+FROM (
+    SELECT s.night, s.instrument, 0 AS planned, 1 AS seen, (s.kind = 'reference')::int AS ref, t.verdict, s.state
     FROM pkvigil.sample_set s LEFT JOIN pkvigil.standing t ON t.set_id = s.id AND t.current
-    GROUP BY 1, 2
-)
-SELECT coalesce(s.night, p.night) AS night, coalesce(s.instrument, p.instrument) AS instrument,
-       coalesce(p.n, 0)::int AS sets_planned, coalesce(s.n, 0)::int AS sets_seen, coalesce(s.refs, 0)::int AS references_seen,
-       coalesce(s.stands, 0)::int AS stands, coalesce(s.stands_noted, 0)::int AS stands_noted, coalesce(s.held, 0)::int AS held,
-       coalesce(s.no_number, 0)::int AS no_number, coalesce(s.waiting, 0)::int AS waiting, coalesce(s.gathering, 0)::int AS gathering,
-       coalesce(s.in_question, 0)::int AS in_question
-FROM seen s FULL JOIN planned p ON p.night = s.night AND p.instrument = s.instrument;
+    UNION ALL
+    SELECT p.night, p.instrument, 1, 0, 0, NULL, NULL
+    FROM (SELECT DISTINCT p.night, p.instrument, p.set_name, p.slot
+          FROM pkvigil.plan_row p JOIN pkvigil.file_newest f ON f.id = p.file_id) p
+) x
+GROUP BY x.night, x.instrument;
 
 CREATE VIEW readout.release_list AS
 SELECT s.id AS set_id, s.key AS set_key, s.night, s.instrument, r.id AS result_id, s.lot, s.compound AS dye, p.step, p.pka, p.u, p.k,
@@ -159,30 +155,28 @@ JOIN pkvigil.result r ON r.id = t.result_id
 JOIN pkvigil.result_pka p ON p.result_id = t.result_id
 WHERE t.current AND NOT t.struck AND s.kind = 'sample';
 
+CREATE VIEW pkvigil.reference_now AS
+SELECT s.compound AS reference, s.night, s.instrument, t.result_id
+FROM pkvigil.standing t JOIN pkvigil.sample_set s ON s.id = t.set_id
+WHERE t.current AND s.kind = 'reference' AND t.verdict IN ('stands', 'stands-noted', 'in-question');
+
+CREATE VIEW pkvigil.reference_mean AS
+SELECT r.reference, r.night, r.instrument, p.step, avg(p.pka) AS pka, count(*) AS n
+FROM pkvigil.reference_now r JOIN pkvigil.result_pka p ON p.result_id = r.result_id
+GROUP BY r.reference, r.night, r.instrument, p.step;
+
 -- Equal keys are equal errors, so the variance of a difference sums over keys: what both share cancels as far as the sensitivities agree.
 CREATE VIEW readout.pairs AS
-WITH ref AS (
-    SELECT s.compound AS reference, s.night, s.instrument, p.result_id, p.step, p.pka,
-           1.0 / count(*) OVER (PARTITION BY s.compound, s.night, s.instrument, p.step) AS w
-    FROM pkvigil.standing t
-    JOIN pkvigil.sample_set s ON s.id = t.set_id
-    JOIN pkvigil.result_pka p ON p.result_id = t.result_id
-    WHERE t.current AND s.kind = 'reference' AND t.verdict IN ('stands', 'stands-noted', 'in-question')
-), mean AS (
-    SELECT reference, night, instrument, step, sum(w * pka) AS pka, count(*) AS n FROM ref GROUP BY 1, 2, 3, 4
-), part AS (
-    SELECT r.reference, r.night, r.instrument, r.step,
-           CASE WHEN c.shared THEN c.key ELSE 'own:' || c.result_id || ':' || c.idx END AS key, sum(r.w * c.c * c.u) AS cu
-    FROM ref r JOIN pkvigil.result_component c ON c.result_id = r.result_id AND c.step = r.step
-    GROUP BY 1, 2, 3, 4, 5
-)
-SELECT a.reference, a.night, a.step, a.instrument AS instrument_a, b.instrument AS instrument_b, a.pka - b.pka AS difference,
-       (SELECT sqrt(sum(d.cu * d.cu)) FROM (
-            SELECT sum(CASE WHEN x.instrument = a.instrument THEN x.cu ELSE -x.cu END) AS cu FROM part x
-            WHERE x.reference = a.reference AND x.night = a.night AND x.step = a.step AND x.instrument IN (a.instrument, b.instrument)
-            GROUP BY x.key) d) AS u_difference,
+SELECT a.reference, a.night, a.step, a.instrument AS instrument_a, b.instrument AS instrument_b, a.pka - b.pka AS difference, d.u AS u_difference,
        a.n::int AS sets_a, b.n::int AS sets_b
-FROM mean a JOIN mean b ON b.reference = a.reference AND b.night = a.night AND b.step = a.step AND a.instrument < b.instrument;
+FROM pkvigil.reference_mean a
+JOIN pkvigil.reference_mean b ON b.reference = a.reference AND b.night = a.night AND b.step = a.step AND a.instrument < b.instrument
+CROSS JOIN LATERAL (
+    SELECT sqrt(sum(k.cu * k.cu)) AS u FROM (
+        SELECT sum(c.c * c.u * CASE WHEN r.instrument = a.instrument THEN 1.0 / a.n ELSE -1.0 / b.n END) AS cu
+        FROM pkvigil.reference_now r JOIN pkvigil.result_component c ON c.result_id = r.result_id AND c.step = a.step
+        WHERE r.reference = a.reference AND r.night = a.night AND r.instrument IN (a.instrument, b.instrument)
+        GROUP BY CASE WHEN c.shared THEN c.key ELSE 'own:' || c.result_id || ':' || c.idx END) k) d;
 
 CREATE VIEW readout.electrodes AS
 SELECT c.electrode, c.id AS calibration_id, c.measured_at AS calibrated_at, f.slope_acid_pct, f.slope_base_pct, f.potential7_mv,
