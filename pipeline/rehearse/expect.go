@@ -19,10 +19,10 @@ func expectations() map[string]string {
 		"file.cut": ExpectRefused, "file.empty": ExpectRefused, "file.comma": ExpectNothing,
 		"file.encoding": ExpectNothing, "file.sentinel": ExpectNothing, "file.otherkind": ExpectRefused,
 		"file.multi": ExpectRefused, "file.mislabelled": ExpectRefused, "file.copy": ExpectTwin,
-		"file.normform": ExpectNothing, "file.litter": ExpectNothing, "file.spreadsheet": ExpectRefused,
+		"file.normform": ExpectNothing, "file.litter": ExpectNothing, "file.spreadsheet": ExpectWaiting,
 		"name.typo": ExpectParked, "name.role": ExpectWaiting, "name.blankwrong": ExpectParked,
 		"name.interleaved": ExpectParked, "name.restart": ExpectRevised, "clock.skew": ExpectNothing,
-		"clock.reset": ExpectNothing, "ph.garbled": ExpectRefused, "name.phlate": ExpectLate,
+		"clock.reset": ExpectNothing, "ph.garbled": ExpectWaiting, "name.phlate": ExpectLate,
 	}
 }
 

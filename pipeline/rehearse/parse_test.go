@@ -143,3 +143,39 @@ func sameScan(t *testing.T, set *Set, f File, got parse.Scan) {
 		}
 	}
 }
+
+// Faults of files that ask for refusal are refused by the readers, and those
+// that ask for nothing are read.
+func TestReadersAgreeWithExpectations(t *testing.T) {
+	sc := &Scenario{Seed: 5, Design: Design{Dyes: []Dye{Dyes()["PR"]}}, Noise: Quiet()}
+	sets, err := sc.Night(1)
+	if err != nil {
+		t.Fatal(err)
+	}
+	before := Files(sets[0], Style{})
+	for _, key := range FileFaultKeys() {
+		after, err := SpoilFiles(before, Fault{Key: key, Rung: 3}, dice(1, key))
+		if err != nil {
+			t.Fatal(err)
+		}
+		refused := ""
+		for _, f := range after {
+			if f.Role == "ignore" {
+				continue
+			}
+			if _, err := export.Read(f.Path, f.Bytes, parse.Options{Role: f.Role}); err != nil {
+				refused += err.Error()
+			}
+		}
+		switch ExpectationOf(key) {
+		case ExpectRefused:
+			if refused == "" {
+				t.Errorf("%s: every file is read", key)
+			}
+		default:
+			if refused != "" {
+				t.Errorf("%s: %s", key, refused)
+			}
+		}
+	}
+}
