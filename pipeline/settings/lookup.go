@@ -35,9 +35,10 @@ func (e *CompoundError) Error() string {
 	return fmt.Sprintf("set %q fits the sets patterns of compounds %s; make one of them narrower", e.Set, strings.Join(e.Names, " and "))
 }
 
-// CompoundOf finds the one compound whose sets pattern covers the whole set
-// name, and the lot its template gives ("" if it has none). The error is a
-// *CompoundError when none or several fit.
+// CompoundOf finds the one compound whose sets pattern is found in the set
+// name, and the lot its template gives ("" if it has none). The pattern counts
+// as written: it binds itself with ^ and $. The error is a *CompoundError when
+// none or several fit.
 func (s *Settings) CompoundOf(set string) (*Compound, string, error) {
 	var hit *Compound
 	var lot string

@@ -221,7 +221,7 @@ func TestCompoundOf(t *testing.T) {
 [[compound]]
 name = "CRR"
 charge = -1
-sets = 'CRR-(?P<lot>\d+)'
+sets = '^CRR-(?P<lot>\d+)$'
 lot = "C ${lot}"
 [[compound]]
 name = "TB"
@@ -229,7 +229,7 @@ charge = -1
 [[compound]]
 name = "wide"
 charge = -1
-sets = 'CRR-9.*'
+sets = '^CRR-9'
 `), "x.toml")
 	if err != nil {
 		t.Fatal(err)

@@ -100,7 +100,7 @@ type Compound struct {
 	PathMM      float64   `toml:"path_mm"`
 	Molar       float64   `toml:"concentration"` // mol/L of dye, for molar coefficients; 0: per set
 
-	sets *regexp.Regexp // Sets, covering the whole name
+	sets *regexp.Regexp // Sets, compiled
 }
 
 // Instrument is one spectrophotometer with what belongs to it.
