@@ -74,26 +74,18 @@ func ModelChoice(p Problem, maxSteps int) (*Choice, error) {
 			prev := &out.Models[n-2]
 			mod.Gain = s.criterionGain(&q, prev.Result.Own.PKa, r.Own.PKa)
 			mod.judge(prev, going)
-			going = going && mod.Accepted
+			going = going && mod.Gain > 6 && (prev.Extra || prev.P < 0.01)
 			if mod.Accepted {
 				out.Steps = n
 			}
-			if mod.Undecided && prev.Steps == out.Steps || mod.Undecided && mod.Accepted {
-				out.Undecided = true
-			}
+			out.Undecided = out.Undecided || mod.Undecided && (prev.Steps == out.Steps || mod.Accepted)
 		} else {
 			mod.Accepted, mod.Reason = true, "the simplest model"
 		}
 		out.Models = append(out.Models, mod)
-		if !going && n > out.Steps+1 {
+		if !going {
 			break
 		}
-	}
-	for out.Steps > 1 && !out.Models[out.Steps-1].adequate() {
-		// A better model that is still wrong is no answer.
-		m := &out.Models[out.Steps-1]
-		m.Accepted, m.Reason = false, m.Reason+", but it does not explain the set either"
-		out.Steps--
 	}
 	if last := out.Models[out.Steps-1]; last.P < 0.01 {
 		out.Warning = fmt.Sprintf("No model up to %d steps explains the set within its stated errors (p = %.2g): more than these equilibria, or a wrong pH axis.", len(out.Models), last.P)
@@ -209,8 +201,8 @@ func (mod *Model) judge(prev *Model, going bool) {
 	switch {
 	case !going:
 		mod.Reason = "a simpler model was enough"
-	case mod.Result.Status != Converged:
-		mod.Reason = "the data do not fix its constants: " + mod.Result.Status.String()
+	case mod.Result.Status == Undetermined:
+		mod.Reason = "the data do not fix its constants"
 	case !prev.Extra && !(prev.P < 0.01):
 		mod.Reason = fmt.Sprintf("%d steps leave neither a further component nor an improbable misfit (p = %.2g)", prev.Steps, prev.P)
 	case !(mod.Gain > 6):
@@ -219,6 +211,8 @@ func (mod *Model) judge(prev *Model, going bool) {
 		mod.Reason = "it needs a negative spectrum"
 	case mod.Outside:
 		mod.Reason = "it needs a pKa outside the ladder"
+	case mod.Result.Status != Converged || !mod.adequate():
+		mod.Reason = fmt.Sprintf("the criterion on rungs improves by %.1f, but it does not explain the set either", mod.Gain)
 	default:
 		mod.Accepted = true
 		mod.Reason = fmt.Sprintf("the criterion on rungs improves by %.1f", mod.Gain)

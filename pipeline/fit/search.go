@@ -205,7 +205,9 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	c.spectra(p, r)
 	c.shares(r)
 	c.components(opt, r)
-	s.leaveOneOut(shared, opt, r)
+	if r.Status == Converged {
+		s.leaveOneOut(shared, opt, r)
+	}
 	s.doubt(opt, r)
 	if p.NonNegative && !c.fixed && r.Status == Converged {
 		s.constrain(p, shared, opt, r)

@@ -32,24 +32,41 @@ func Solve(p Problem, opt Options) (*Result, error) {
 
 // Solve is the method form, which reuses the memory of earlier fits.
 func (s *Solver) Solve(p Problem, opt Options) (*Result, error) {
-	if err := check(&p); err != nil {
-		return &Result{Status: Unusable, Steps: p.Steps}, err
+	r := &Result{}
+	return r, s.Refit(&p, opt, r)
+}
+
+// Refit is Solve into an existing Result, whose slices are reused where they
+// are long enough: a bare fit then allocates nothing.
+func (s *Solver) Refit(p *Problem, opt Options, r *Result) error {
+	r.reset(p)
+	if err := check(p); err != nil {
+		return err
 	}
-	shared, err := merge(&p)
+	shared, err := merge(p)
 	if err != nil {
-		return &Result{Status: Unusable, Steps: p.Steps}, err
+		return err
 	}
-	r := &Result{Steps: p.Steps, Free: p.Library == nil, Slope: math.NaN(), SlopeSD: math.NaN()}
-	if err := s.prepare(&p, opt); err != nil {
-		r.Status = Unusable
-		return r, err
+	if err := s.prepare(p, opt); err != nil {
+		return err
 	}
 	r.NoiseSD = s.noiseSD()
-	s.search(&p, shared, opt, r)
+	r.Status = NotRun
+	s.search(p, shared, opt, r)
 	if r.Status != Converged {
-		r.Notes = append(r.Notes, fmt.Sprintf("the fit ended as %v after %d iterations", r.Status, r.Iterations))
+		r.Notes = append(r.Notes, fmt.Sprintf("The fit ended as %v after %d iterations.", r.Status, r.Iterations))
 	}
-	return r, nil
+	return nil
+}
+
+// reset empties the result; it is unusable until the fit says otherwise.
+func (r *Result) reset(p *Problem) {
+	*r = Result{Status: Unusable, Steps: p.Steps, Free: p.Library == nil, Own: r.Own, Full: r.Full,
+		Slope: math.NaN(), SlopeSD: math.NaN()}
+	for _, e := range [2]*Estimate{&r.Own, &r.Full} {
+		*e = Estimate{PKa: e.PKa[:0], Cov: e.Cov[:0], CovOwn: e.CovOwn[:0], Gain: e.Gain[:0], Eta: e.Eta[:0],
+			Kappa: e.Kappa[:0], Baseline: e.Baseline[:0], Components: e.Components[:0]}
+	}
 }
 
 // String names the status in words.

@@ -1,0 +1,114 @@
+package fit
+
+import (
+	"fmt"
+	"testing"
+)
+
+// BenchmarkPlain: m = 20, pKa and covariance only, given start, no nuisance.
+func BenchmarkPlain(b *testing.B) {
+	for n := 1; n <= 4; n++ {
+		for _, w := range []int{61, 601, 6001} {
+			b.Run(fmt.Sprintf("n=%d/w=%d", n, w), func(b *testing.B) {
+				p := benchSet(n, w, false, 1)
+				benchSolver(b, p)
+			})
+		}
+	}
+}
+
+// BenchmarkNuisance: both estimates with latent pH, amounts, offsets and two shared errors.
+func BenchmarkNuisance(b *testing.B) {
+	for n := 1; n <= 4; n++ {
+		b.Run(fmt.Sprintf("n=%d/w=601", n), func(b *testing.B) {
+			benchSolver(b, benchSet(n, 601, true, 1))
+		})
+	}
+}
+
+func benchSolver(b *testing.B, p Problem) {
+	var s Solver
+	var r Result
+	b.ReportAllocs()
+	for b.Loop() {
+		if err := s.Refit(&p, Options{Bare: true}, &r); err != nil || r.Status != Converged {
+			b.Fatal(err, r.Status)
+		}
+	}
+	b.ReportMetric(float64(r.Iterations), "iterations")
+}
+
+// BenchmarkGonum: the same plain fit with gonum on the full matrix and after a
+// singular value decomposition.
+func BenchmarkGonum(b *testing.B) {
+	for n := 1; n <= 3; n++ {
+		for _, way := range []struct {
+			name             string
+			svd, differences bool
+		}{{"full-differences", false, true}, {"full-kaufman", false, false}, {"svd-differences", true, true}, {"svd-kaufman", true, false}} {
+			b.Run(fmt.Sprintf("n=%d/%s", n, way.name), func(b *testing.B) {
+				p := benchSet(n, 601, false, 1)
+				b.ReportAllocs()
+				for b.Loop() {
+					newReference(p, way.svd, way.differences).fit(p.Start)
+				}
+			})
+		}
+	}
+}
+
+// BenchmarkGram is the reduction alone.
+func BenchmarkGram(b *testing.B) {
+	p := benchSet(3, 601, true, 1)
+	var d reduced
+	d.load(&p, 0)
+	for b.Loop() {
+		d.product()
+	}
+}
+
+// BenchmarkSearch is a fit without start values: the scan of the ladder included.
+func BenchmarkSearch(b *testing.B) {
+	for n := 1; n <= 4; n++ {
+		b.Run(fmt.Sprintf("n=%d", n), func(b *testing.B) {
+			p := benchSet(n, 601, true, 1)
+			p.Start = nil
+			benchSolver(b, p)
+		})
+	}
+}
+
+// BenchmarkWhole is Solve with everything that describes the result.
+func BenchmarkWhole(b *testing.B) {
+	for n := 1; n <= 3; n++ {
+		b.Run(fmt.Sprintf("n=%d", n), func(b *testing.B) {
+			p := benchSet(n, 601, true, 1)
+			p.Start = nil
+			var s Solver
+			b.ReportAllocs()
+			for b.Loop() {
+				if _, err := s.Solve(p, Options{}); err != nil {
+					b.Fatal(err)
+				}
+			}
+		})
+	}
+}
+
+// BenchmarkDraw is one Monte Carlo draw with its refit.
+func BenchmarkDraw(b *testing.B) {
+	for n := 1; n <= 3; n++ {
+		b.Run(fmt.Sprintf("n=%d", n), func(b *testing.B) {
+			p := benchSet(n, 601, true, 1)
+			r, err := Solve(p, Options{Bare: true})
+			if err != nil {
+				b.Fatal(err)
+			}
+			b.ReportAllocs()
+			b.ResetTimer()
+			if _, err := MonteCarlo(p, r, MCOptions{Draws: b.N, Workers: 1}); err != nil {
+				b.Fatal(err)
+			}
+		})
+	}
+}
