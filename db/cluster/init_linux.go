@@ -124,6 +124,7 @@ func (p *place) arguments(cfg Config) []string {
 		"checkpoint_timeout":                  "15min",
 		"max_connections":                     "60",
 		"jit":                                 "off",
+		"max_parallel_workers_per_gather":     "0", // cores are for fits, and containers have little /dev/shm
 		"timezone":                            "UTC",
 		"log_timezone":                        "UTC",
 		"log_line_prefix":                     "%m [%p] ",

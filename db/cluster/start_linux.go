@@ -21,6 +21,7 @@ const (
 	lookEvery    = 20 * time.Millisecond
 	firstPause   = 200 * time.Millisecond
 	longestPause = 30 * time.Second
+	goodLife     = 10 * time.Second // a server that lived shorter is not started again at once
 	maxLogBytes  = 8 << 20
 )
 
@@ -205,13 +206,17 @@ func (s *Server) makeDatabase(ctx context.Context) error {
 // supervise starts the server again whenever it dies, until Stop.
 func (s *Server) supervise(r *run) {
 	defer close(s.done)
-	for {
+	pause := firstPause
+	for born := time.Now(); ; born = time.Now() {
 		select {
 		case <-r.died:
 		case <-s.quit:
 			return
 		}
 		died := time.Now()
+		if died.Sub(born) > goodLife {
+			pause = firstPause
+		}
 		s.mu.Lock()
 		s.pid = 0
 		stopped := s.stopped
@@ -221,11 +226,10 @@ func (s *Server) supervise(r *run) {
 		}
 		why := orExit(r.why).Error()
 		s.cfg.say("the private server died (%s); starting it again", why)
-		next := s.relaunch()
-		if next == nil {
+		r = s.relaunch(&pause)
+		if r == nil {
 			return
 		}
-		r = next
 		away := time.Since(died)
 		s.cfg.say("the private server answers again after %s", away.Round(time.Millisecond))
 		if s.cfg.Restarted != nil {
@@ -234,8 +238,9 @@ func (s *Server) supervise(r *run) {
 	}
 }
 
-// relaunch tries until the server answers; nil when Stop came first.
-func (s *Server) relaunch() *run {
+// relaunch tries until the server answers, pausing before each try, longer
+// each time; nil when Stop came first. The first pause of all is skipped.
+func (s *Server) relaunch(pause *time.Duration) *run {
 	ctx, cancel := context.WithCancel(context.Background())
 	defer cancel()
 	go func() {
@@ -245,8 +250,15 @@ func (s *Server) relaunch() *run {
 		case <-ctx.Done():
 		}
 	}()
-	pause := firstPause
 	for {
+		if *pause > firstPause {
+			select {
+			case <-s.quit:
+				return nil
+			case <-time.After(*pause):
+			}
+		}
+		*pause = min(2*(*pause), longestPause)
 		r, err := s.launch(ctx)
 		if err == nil {
 			return r
@@ -254,13 +266,7 @@ func (s *Server) relaunch() *run {
 		if ctx.Err() != nil {
 			return nil
 		}
-		s.cfg.say("starting the private server again failed, next try in %s: %v", pause, err)
-		select {
-		case <-s.quit:
-			return nil
-		case <-time.After(pause):
-		}
-		pause = min(2*pause, longestPause)
+		s.cfg.say("starting the private server again failed, next try in %s: %v", *pause, err)
 	}
 }
 
