@@ -389,3 +389,61 @@ func TestNoDataHoldsEverything(t *testing.T) {
 		}
 	})
 }
+
+// Twice the budget is the border; what wanders without a trend is no baseline; and of
+// independent nights one baseline in twenty is taken for correlated.
+func TestRefusalBorders(t *testing.T) {
+	x := noise(8, 25)
+	s := AlgorithmA(x).SD
+	if b := Learn(scaled(x, 5, 1), s/1.95); b.Refused != "" {
+		t.Errorf("1.95 times the budget: %s", b.Refused)
+	}
+	if b := Learn(scaled(x, 5, 1), s/2.05); !strings.Contains(b.Refused, "more than twice") {
+		t.Errorf("2.05 times the budget: %q", b.Refused)
+	}
+	wave := make([]float64, 60)
+	for i := range wave {
+		wave[i] = math.Cos(2*math.Pi*float64(i)/30) + 0.05*x[i%25]
+	}
+	if b := Learn(scaled(wave, 5, 1), 1); !strings.Contains(b.Refused, "wander") {
+		t.Errorf("two slow waves: %q", b.Refused)
+	}
+	for seed := range uint64(200) {
+		if b := Learn(scaled(noise(seed+700, 7), 5, 1), 1); b.Phi != 0 || b.Refused != "" {
+			t.Fatalf("seven nights: correlation taken %.2f, refused %q; that is too few to say either", b.Phi, b.Refused)
+		}
+	}
+	taken := 0
+	for seed := range uint64(1000) {
+		if Learn(scaled(noise(seed+9000, 25), 5, 1), 1).Phi > 0 {
+			taken++
+		}
+	}
+	if taken < 20 || taken > 80 {
+		t.Errorf("%d of 1000 independent baselines taken for correlated, want about 50", taken)
+	}
+}
+
+// After a gap yesterday's value foretells less: phi to the power of the nights between.
+func TestCorrelationFadesOverGaps(t *testing.T) {
+	b := Known(0, 1)
+	b.Phi = 0.5
+	rules := Rules{CusumSlack: 0.5, CusumDecision: 50}
+	for _, gap := range []int{1, 2, 10} {
+		js := Judge(b, []Value{{1, 2, 0}, {1 + gap, 2, 0}}, rules)
+		f := math.Pow(0.5, float64(gap))
+		near(t, "sum after a gap", js[1].CusumHigh, (2-0.5)+(2-2*f)/math.Sqrt(1-f*f)-0.5, 1e-12)
+	}
+}
+
+// The widening of the weighted mean in closed form: the Student multiplier, and half
+// the uncertainty of the centre beside the exact variance.
+func TestWeightedMeanWidening(t *testing.T) {
+	b := Learn(scaled(noise(8, 20), 5, 1), 1)
+	if b.Phi != 0 || b.Stage != Settled {
+		t.Fatalf("%+v", b)
+	}
+	js := Judge(b, []Value{{1, 5, 0}, {2, 5, 0}}, Rules{EWMAWeight: 0.2, EWMAWidth: 2.864})
+	exact := 0.2 / 1.8 * (1 - math.Pow(0.8, 4))
+	near(t, "half width", (js[1].EWMAHigh-b.Centre)/b.SD, studentQuantile(2.864, 19)*math.Sqrt(exact+0.25/20), 1e-12)
+}

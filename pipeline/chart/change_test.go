@@ -141,3 +141,48 @@ func TestDifferences(t *testing.T) {
 		near(t, "its uncertainty", got[i].SD, w.SD, 1e-12)
 	}
 }
+
+// The intervals against brute force: the likelihood of every onset integrated over the
+// size on a grid.
+func TestOnsetAgainstIntegration(t *testing.T) {
+	for seed := range uint64(40) {
+		x := noise(seed+300, 14)
+		for i := 8; i < len(x); i++ {
+			x[i] += 1.2
+		}
+		got := FindStep(series(x), Known(0, 1))
+		weight := make([]float64, len(x))
+		var total, mean, second float64
+		for first := range x {
+			for d := -8.0; d <= 8; d += 0.01 {
+				l := 0.0
+				for _, v := range x[first:] {
+					l += v*d - d*d/2
+				}
+				p := math.Exp(l)
+				weight[first] += p
+				total, mean, second = total+p, mean+p*d, second+p*d*d
+			}
+		}
+		low, high, held := len(x), -1, 0.0
+		left := append([]float64(nil), weight...)
+		for held < 0.9*total {
+			best := 0
+			for i := range left {
+				if left[i] > left[best] {
+					best = i
+				}
+			}
+			held += left[best]
+			left[best] = -1
+			low, high = min(low, best), max(high, best)
+		}
+		if got.OnsetLow != low+1 || got.OnsetHigh != high+1 {
+			t.Errorf("series %d: onset %d to %d, by integration %d to %d", seed, got.OnsetLow, got.OnsetHigh, low+1, high+1)
+		}
+		mean /= total
+		spread := math.Sqrt(second/total - mean*mean)
+		near(t, "size low", got.SizeLow, mean-1.96*spread, 1e-3)
+		near(t, "size high", got.SizeHigh, mean+1.96*spread, 1e-3)
+	}
+}
