@@ -133,7 +133,8 @@ type track struct {
 	base    chart.Baseline
 	centre  float64 // of the raw values, squares included as they are
 	sd      float64
-	learned int // nights behind centre and sd
+	learned int     // nights behind centre and sd
+	own     float64 // median of the points' own standard deviations; 0 unknown
 }
 
 func trackKey(s db.Series) string {
@@ -187,6 +188,17 @@ func (s *Service) tracks(ctx context.Context, q db.Querier, until time.Time) ([]
 // settle averages each night's judged points; a night without any is a gap.
 func (t *track) settle() {
 	t.values = make([]float64, len(t.nights))
+	var own []float64
+	for _, ps := range t.points {
+		for _, p := range ps {
+			if p.Judged && p.SD > 0 {
+				own = append(own, p.SD)
+			}
+		}
+	}
+	if len(own) > 0 {
+		t.own = chart.Median(own)
+	}
 	for i, ps := range t.points {
 		n, sum := 0, 0.0
 		for _, p := range ps {
@@ -240,7 +252,7 @@ func (t *track) learn(c settings.Charts) {
 		hi = n
 	}
 	values := t.chartValues()[lo:hi]
-	t.base = chart.LearnOn(t.scale(), values, budgetSD(t.characteristic()))
+	t.base = chart.LearnOn(t.scale(), values, t.budget())
 	var raw []float64
 	for _, v := range t.values[lo:hi] {
 		if !math.IsNaN(v) {
@@ -250,7 +262,7 @@ func (t *track) learn(c settings.Charts) {
 	t.learned = len(raw)
 	r := chart.AlgorithmA(raw)
 	t.centre = r.Centre
-	prior := budgetSD(t.characteristic())
+	prior := t.budget()
 	if t.scale() == chart.Squares {
 		// A square of nine degrees of freedom scatters by 0.47 of itself.
 		prior = math.Sqrt(2.0/9) * t.centre
@@ -261,6 +273,16 @@ func (t *track) learn(c settings.Charts) {
 		sd = prior
 	}
 	t.sd = math.Sqrt((6*prior*prior + math.Max(n-1, 0)*sd*sd) / (6 + math.Max(n-1, 0)))
+}
+
+// budget is the spread promised for one night: what the habits of careful work
+// give, and what the fit says of its own noise for this very reference.
+func (t *track) budget() float64 {
+	b := budgetSD(t.characteristic())
+	if t.scale() == chart.Squares || b == 0 {
+		return b
+	}
+	return math.Hypot(b, t.own)
 }
 
 // rules are the chart rules of the settings.

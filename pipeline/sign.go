@@ -309,6 +309,7 @@ func (s *Service) signBaseline(ctx context.Context, tx pgx.Tx, g Signature, d *d
 		return "", err
 	}
 	n := 0
+	var refused []string
 	for _, t := range ts {
 		name := t.series.Scope + "/" + t.series.Reference
 		if ok, _ := path.Match(g.Object[0], name); !ok && t.series.Reference != g.Object[0] && t.series.Scope != g.Object[0] {
@@ -321,7 +322,8 @@ func (s *Service) signBaseline(ctx context.Context, tx pgx.Tx, g Signature, d *d
 			continue
 		}
 		if t.base.Refused != "" {
-			return "", fmt.Errorf("baseline of %s %s: %s", name, t.series.Characteristic, t.base.Refused)
+			refused = append(refused, fmt.Sprintf("%s %s: %s", name, t.series.Characteristic, t.base.Refused))
+			continue
 		}
 		b := &db.Baseline{Series: t.series, Stage: string(t.base.Stage), Centre: t.base.Centre, Spread: t.base.SD, N: t.learned, FromNight: g.Object[1], ToNight: g.Object[2],
 			SignedBy: g.As, Because: g.Because, FrozenAt: d.At, At: d.At}
@@ -330,10 +332,16 @@ func (s *Service) signBaseline(ctx context.Context, tx pgx.Tx, g Signature, d *d
 		}
 		n++
 	}
+	if n == 0 && len(refused) > 0 {
+		return "", fmt.Errorf("no baseline can be learnt: %s", strings.Join(refused, "; "))
+	}
 	if n == 0 {
 		return "", fmt.Errorf("reference %q has no chart with three nights between %s and %s: %w", g.Object[0], g.Object[1], g.Object[2], ErrUnknownObject)
 	}
 	d.After = fmt.Sprintf("%d charts learnt from %s to %s", n, g.Object[1], g.Object[2])
+	if len(refused) > 0 {
+		d.After += "; not learnt, and the earlier baselines stay: " + strings.Join(refused, "; ")
+	}
 	return d.After, nil
 }
 

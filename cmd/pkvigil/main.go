@@ -8,6 +8,7 @@ import (
 	"os"
 	"os/signal"
 	"syscall"
+	_ "time/tzdata" // zones are named in the settings, also on machines without a zone database
 )
 
 func main() {

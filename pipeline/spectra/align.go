@@ -105,14 +105,9 @@ func list(names []string) string {
 func (p *preparation) displacement() (delta, sd []float64) {
 	a, cols := p.matrix()
 	m, w := len(p.rows), len(cols)
-	f := factorise(a, m, w, p.opt.Forms)
-	if k := f.clear(rowNoise(a, m, w), 3); k < f.k {
-		if k == 0 {
-			return nil, nil
-		}
-		// A colourless form adds no component; noise in its place would pass
-		// for displacements.
-		f = factorise(a, m, w, k)
+	f := p.formsSeen(a, m, w, cols)
+	if f.k == 0 || f.k > m-2 {
+		return nil, nil
 	}
 	q := f.rightBasis()
 	r := f.residual(a)
@@ -233,26 +228,29 @@ func flanksAgree(r, g []float64, most float64) bool {
 // rightBasis is an orthonormal basis of the components and a constant.
 func (f factor) rightBasis() [][]float64 {
 	var q [][]float64
-	add := func(v []float64) {
-		norm := math.Sqrt(dot(v, v))
-		removeBasis(v, q)
-		removeBasis(v, q)
-		if left := math.Sqrt(dot(v, v)); left > 1e-8*norm {
-			for j := range v {
-				v[j] /= left
-			}
-			q = append(q, v)
-		}
-	}
 	for c := range f.k {
-		add(append([]float64(nil), f.v[c*f.w:(c+1)*f.w]...))
+		q = extend(q, append([]float64(nil), f.v[c*f.w:(c+1)*f.w]...))
 	}
 	one := make([]float64, f.w)
 	for j := range one {
 		one[j] = 1
 	}
-	add(one)
-	return q
+	return extend(q, one)
+}
+
+// extend adds what v holds beyond an orthonormal basis to it; v is used up.
+func extend(q [][]float64, v []float64) [][]float64 {
+	norm := math.Sqrt(dot(v, v))
+	removeBasis(v, q)
+	removeBasis(v, q)
+	left := math.Sqrt(dot(v, v))
+	if !(left > 1e-8*norm) {
+		return q
+	}
+	for j := range v {
+		v[j] /= left
+	}
+	return append(q, v)
 }
 
 // removeBasis projects a row off an orthonormal basis.
@@ -265,8 +263,49 @@ func removeBasis(row []float64, q [][]float64) {
 	}
 }
 
-// derivatives of the scans as the components see them, per nm, m*w.
-func (p *preparation) derivatives(f factor, cols []int) []float64 {
+// formsSeen decomposes the set into the components that are forms. A colourless
+// form adds none, and noise in its place would pass for displacements. A clear
+// component beyond the expected ones is a form too (a step or a dye that nobody
+// announced) unless it looks like the derivative of the others: that is what
+// displaced scans leave.
+func (p *preparation) formsSeen(a []float64, m, w int, cols []int) factor {
+	wide := factorise(a, m, w, min(p.opt.Forms+2, m))
+	clear := wide.clear(rowNoise(a, m, w), 3)
+	k := min(p.opt.Forms, clear)
+	for k > 0 && k < clear {
+		f := wide.first(k)
+		q := f.rightBasis()
+		v := append([]float64(nil), wide.v[k*w:(k+1)*w]...)
+		removeBasis(v, q)
+		whole := dot(v, v)
+		d := p.componentSlopes(f, cols)
+		var slopes [][]float64
+		for c := range k {
+			row := d[c*w : (c+1)*w]
+			removeBasis(row, q)
+			slopes = extend(slopes, row)
+		}
+		removeBasis(v, slopes)
+		if dot(v, v) < 0.3*whole {
+			break
+		}
+		k++
+	}
+	return wide.first(k)
+}
+
+// first is the same decomposition with fewer components.
+func (f factor) first(k int) factor {
+	out := factor{m: f.m, w: f.w, k: k, s: f.s, v: f.v[:k*f.w], u: make([]float64, f.m*k)}
+	for i := range f.m {
+		copy(out.u[i*k:(i+1)*k], f.u[i*f.k:i*f.k+k])
+	}
+	return out
+}
+
+// componentSlopes are the derivatives of the right vectors, per nm, k*w: the
+// slope of a straight line through up to five points.
+func (p *preparation) componentSlopes(f factor, cols []int) []float64 {
 	w := f.w
 	d := make([]float64, f.k*w)
 	x := make([]float64, w)
@@ -276,7 +315,6 @@ func (p *preparation) derivatives(f factor, cols []int) []float64 {
 	for c := range f.k {
 		for j := range w {
 			lo, hi := max(0, j-2), min(w-1, j+2)
-			// slope of a straight line through up to five points
 			n, sx, sy := float64(hi-lo+1), 0.0, 0.0
 			for k := lo; k <= hi; k++ {
 				sx += x[k]
@@ -290,6 +328,13 @@ func (p *preparation) derivatives(f factor, cols []int) []float64 {
 			d[c*w+j] = sxy / sxx
 		}
 	}
+	return d
+}
+
+// derivatives of the scans as the components see them, per nm, m*w.
+func (p *preparation) derivatives(f factor, cols []int) []float64 {
+	w := f.w
+	d := p.componentSlopes(f, cols)
 	out := make([]float64, f.m*w)
 	for i := range f.m {
 		for c := range f.k {

@@ -369,7 +369,7 @@ func TestThreeSolutions(t *testing.T) {
 	}
 }
 
-// Prepare leaves its input alone.
+// Prepare leaves its input alone and gives the same bits again.
 func TestInputUntouched(t *testing.T) {
 	s := newPaperSet()
 	s.edit = func(i int, _, y []float64, _ *rand.Rand) {
@@ -379,11 +379,18 @@ func TestInputUntouched(t *testing.T) {
 	}
 	rungs, blanks := s.make()
 	before := fmt.Sprint(rungs, blanks)
-	if _, err := Prepare(rungs, blanks, paperOptions()); err != nil {
+	first, err := Prepare(rungs, blanks, paperOptions())
+	if err != nil {
 		t.Fatal(err)
 	}
 	if fmt.Sprint(rungs, blanks) != before {
 		t.Error("input changed")
+	}
+	for range 5 {
+		again, err := Prepare(rungs, blanks, paperOptions())
+		if err != nil || fmt.Sprintf("%v", *again) != fmt.Sprintf("%v", *first) {
+			t.Fatalf("not the same again: %v", err)
+		}
 	}
 }
 
@@ -437,6 +444,55 @@ func BenchmarkPrepare(b *testing.B) {
 	for b.Loop() {
 		if _, err := Prepare(rungs, blanks, o); err != nil {
 			b.Fatal(err)
+		}
+	}
+}
+
+// A further coloured form that nobody announced is not taken for displaced
+// scans, and displaced scans are still found beside it.
+func TestUnannouncedForm(t *testing.T) {
+	third := [][3]float64{{0.5, 500, 70}}
+	s := newPaperSet()
+	s.ph = make([]float64, 16)
+	for i := range s.ph {
+		s.ph[i] = 4 + 0.4*float64(i)
+	}
+	form := func(x, pH float64) float64 {
+		// second step at 8.4: base form to third form
+		a := 1 / (1 + math.Pow(10, 8.4-pH))
+		b := 1 / (1 + math.Pow(10, s.dye.pKa-pH))
+		return (1-b)*gauss(s.dye.acid, x) + b*(1-a)*gauss(s.dye.base, x) + b*a*gauss(third, x)
+	}
+	for _, moved := range []float64{0, 0.22, 0.45} {
+		for seed := range uint64(10) {
+			s.seed = seed
+			s.edit = func(i int, x, y []float64, rng *rand.Rand) {
+				d := 0.0
+				if i == 9 {
+					d = moved
+				}
+				for j := range y {
+					y[j] = form(x[j]-d, s.ph[i]) + s.noise*rng.NormFloat64()
+				}
+			}
+			o := paperOptions()
+			o.Align = true
+			p := prepared(t, s, o)
+			if _, spike := find(p.Records, "scan.spike"); spike || len(p.LeftOut) > 0 {
+				t.Fatalf("seed %d: %+v %+v", seed, p.Records, p.LeftOut)
+			}
+			for i, d := range p.ShiftNM {
+				want := 0.0
+				if i == 9 {
+					want = moved
+				}
+				if math.Abs(d-want) > 0.06 {
+					t.Fatalf("seed %d: scan %d displaced by %.3f, truth %.2f", seed, i+1, d, want)
+				}
+			}
+			if n := rms(p.NoiseWave) / s.noise; moved < 0.3 && math.Abs(n-1) > 0.12 {
+				t.Fatalf("noise %.3f of the true one", n)
+			}
 		}
 	}
 }
