@@ -47,8 +47,19 @@ func shapeOf(format string) string {
 
 // Summary tells in lines what a file was found to hold.
 func Summary(c *parse.Content) []string {
-	out := []string{fmt.Sprintf("read as %s: %d scans, %d pH readings, %d calibrations, %d rows of a sheet, %d events, %d planned sets",
-		c.Format, len(c.Scans), len(c.Readings), len(c.Calibrations), len(c.Sheet), len(c.Events), len(c.Plan))}
+	var held []string
+	for _, h := range [...]struct {
+		n    int
+		what string
+	}{
+		{len(c.Scans), "scans"}, {len(c.Readings), "pH readings"}, {len(c.Calibrations), "calibrations"},
+		{len(c.Sheet), "rows of a sheet"}, {len(c.Events), "events"}, {len(c.Plan), "planned sets"},
+	} {
+		if h.n > 0 {
+			held = append(held, fmt.Sprintf("%d %s", h.n, h.what))
+		}
+	}
+	out := []string{fmt.Sprintf("read as %s: %s", c.Format, strings.Join(held, ", "))}
 	for i, s := range c.Scans {
 		if i == 20 {
 			out = append(out, fmt.Sprintf("and %d further scans", len(c.Scans)-i))

@@ -285,16 +285,18 @@ func (r *reader) settle(f *facts) {
 // a damaged file are bounded.
 func (r *reader) remark(line int, format string, args ...any) {
 	const most = 200
-	m := parse.Remark{Line: line, Text: fmt.Sprintf(format, args...)}
-	switch {
-	case slices.Contains(r.remarks, m): // traces on one axis repeat its remarks
+	if len(r.remarks) > most {
 		return
-	case len(r.remarks) < most:
-		r.remarks = append(r.remarks, m)
-	case len(r.remarks) == most:
-		r.remarks = append(r.remarks, parse.Remark{Text: "further remarks are left out"})
 	}
-	r.say(line, format, args...)
+	m := parse.Remark{Line: line, Text: fmt.Sprintf(format, args...)}
+	if slices.Contains(r.remarks, m) { // traces on one axis repeat its remarks
+		return
+	}
+	if len(r.remarks) == most {
+		m = parse.Remark{Text: "further remarks are left out"}
+	}
+	r.remarks = append(r.remarks, m)
+	r.say(m.Line, "%s", m.Text)
 }
 
 // say tells the report of Explain what was decided.

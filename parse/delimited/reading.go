@@ -161,12 +161,21 @@ func (r *reader) distinct(good []*reading) []*reading {
 	if len(out) < 2 {
 		return out
 	}
+	plain := slices.DeleteFunc(slices.Clone(out), (*reading).wordy)
+	if len(plain) > 0 { // columns are numbers: a reading with words among them is none beside one without
+		out = plain
+	}
 	fits := slices.DeleteFunc(slices.Clone(out), func(a *reading) bool { return a.d.joined || !a.named || len(a.heads) != a.b.cols })
 	if len(fits) == 1 {
 		r.say(fits[0].header+1, "of %d readings only %s agrees with the number of heads", len(out), fits[0].d)
 		return fits
 	}
 	return out
+}
+
+// wordy tells whether some cell of the table is text under this reading.
+func (a *reading) wordy() bool {
+	return slices.Contains(a.g.decs[a.b.off:a.b.off+a.b.rows*a.b.cols], cellText)
 }
 
 func sameNumbers(a, b *reading) bool {

@@ -59,7 +59,9 @@ func (r *reader) noteFound(a *reading) {
 	if a.d.thousands != 0 {
 		r.found.Thousands = string(rune(a.d.thousands))
 	}
-	r.found.HeaderLine, r.found.FirstLine = a.header+1, a.b.first+1
+	if !a.named { // heads that name the wavelength are found again, on whatever line
+		r.found.HeaderLine, r.found.FirstLine = a.header+1, a.b.first+1
+	}
 	if !r.telling {
 		return
 	}

@@ -42,10 +42,18 @@ func cut(name string, text []byte) (*source, error) {
 // lines fills s.spans and counts the CR taken off before a LF.
 func (s *source) lines(lone bool) (paired int, err error) {
 	text := s.text
+	feed := -1 // the next LF, looked for once however many CR stand before it
 	for at := 0; at < len(text); {
 		end, next := len(text), len(text)
-		if k := bytes.IndexByte(text[at:], '\n'); k >= 0 {
-			end, next = at+k, at+k+1
+		if feed < at {
+			if k := bytes.IndexByte(text[at:], '\n'); k >= 0 {
+				feed = at + k
+			} else {
+				feed = len(text)
+			}
+		}
+		if feed < len(text) {
+			end, next = feed, feed+1
 		}
 		if !lone && end > at && text[end-1] == '\r' && end < len(text) {
 			end--

@@ -261,7 +261,7 @@ func (r *reader) readRows(t *table) {
 			line, i = r.src.text[r.src.spans[i].from:r.src.spans[j].to], j
 		}
 		cells := t.d.split(line, nil)
-		if len(t.rows) == 0 && t.unitsRow(cells) {
+		if !slices.ContainsFunc(cells, filledCell) || len(t.rows) == 0 && t.unitsRow(cells) {
 			continue
 		}
 		if len(t.rows) == maxRows {
@@ -275,7 +275,6 @@ func (r *reader) readRows(t *table) {
 	}
 	t.d.point = r.pointOf(t)
 	r.found.Delimiter, r.found.Decimal = delimiterWord(t.d.delim), string(rune(t.d.point))
-	r.found.HeaderLine = t.header + 1
 }
 
 // unitsRow tells whether the first row below the heads gives their units.
@@ -374,8 +373,11 @@ func (r *reader) overfull(t *table) error {
 
 // over tells whether a row has more filled fields than there are heads.
 func over(row tableRow, heads int) bool {
-	return len(row.cells) > heads && slices.ContainsFunc(row.cells[heads:], func(c []byte) bool { return len(c) > 0 })
+	return len(row.cells) > heads && slices.ContainsFunc(row.cells[heads:], filledCell)
 }
+
+// filledCell tells whether a cell holds something that is kept.
+func filledCell(c []byte) bool { return len(c) > 0 && parse.Clean(c) != "" }
 
 // tableFacts reads the header lines above the heads.
 func (r *reader) tableFacts(t *table) facts {
