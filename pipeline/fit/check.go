@@ -42,19 +42,12 @@ func check(p *Problem) error {
 	case !(p.UAmount >= 0) || !(p.UBaseline >= 0) || math.IsInf(p.UAmount, 0) || math.IsInf(p.UBaseline, 0):
 		return bad("amount scatter %v and baseline %v must be finite and not negative", p.UAmount, p.UBaseline)
 	}
-	for what, v := range map[string][]float64{"absorbance": p.A, "pH": p.PH, "start": p.Start, "library": p.Library} {
-		for i, x := range v {
-			if math.IsNaN(x) || math.IsInf(x, 0) {
-				return bad("%s %d is %v: leave out the wavelength for all rungs, or the rung", what, i, x)
-			}
-		}
+	if err := finite("absorbance", p.A); err != nil {
+		return err
 	}
-	for what, v := range map[string][]float64{"noise per rung": p.NoiseRung, "noise per wavelength": p.NoiseWave} {
-		for i, x := range v {
-			if !(x > 0) || math.IsInf(x, 0) {
-				return bad("%s %d is %v, expected a positive number", what, i, x)
-			}
-		}
+	if err := errors.Join(finite("pH", p.PH), finite("start", p.Start), finite("library", p.Library),
+		positive("noise per rung", p.NoiseRung), positive("noise per wavelength", p.NoiseWave)); err != nil {
+		return err
 	}
 	for i, x := range p.SigmaPH {
 		if !(x >= 0) || math.IsInf(x, 0) {
@@ -64,9 +57,32 @@ func check(p *Problem) error {
 	return nil
 }
 
+// finite refuses NaN and infinities.
+func finite(what string, v []float64) error {
+	for i, x := range v {
+		if x-x != 0 {
+			return bad("%s %d is %v: leave out the wavelength for all rungs, or the rung", what, i, x)
+		}
+	}
+	return nil
+}
+
+// positive refuses all but finite numbers above zero.
+func positive(what string, v []float64) error {
+	for i, x := range v {
+		if !(x > 0) || x-x != 0 {
+			return bad("%s %d is %v, expected a positive number", what, i, x)
+		}
+	}
+	return nil
+}
+
 // merge joins shared errors of equal key, because equal keys are one unknown.
 func merge(p *Problem) ([]Shared, error) {
-	var out []Shared
+	if len(p.Shared) == 0 {
+		return nil, nil
+	}
+	out := make([]Shared, 0, len(p.Shared))
 	for _, s := range p.Shared {
 		if s.S != nil && len(s.S) != len(p.PH) {
 			return nil, bad("shared error %s: %d coefficients, expected one per rung (%d)", s.Key, len(s.S), len(p.PH))

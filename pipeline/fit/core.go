@@ -27,6 +27,8 @@ type core struct {
 	ukap    float64
 	shift   []float64 // m*nb: s_ik u_k
 	frozen  bool      // a, k and b take no part
+	rough   bool      // descend only as far as a start needs
+	lambda  float64   // first damping of a descent
 	pin     int       // index of a parameter of p held fixed, or -1
 	pair    int       // p[pair+1]-p[pair] is held fixed, or -1
 
@@ -59,6 +61,7 @@ type frame struct {
 // shape sizes the buffers for np parameters and nb shared errors.
 func (c *core) shape(np, nb int) {
 	c.n1, c.np, c.nb, c.pin, c.pair = c.n+1, np, nb, -1, -1
+	c.lambda, c.rough = 1e-3, false
 	c.q = c.n1
 	if c.base {
 		c.q++
@@ -309,8 +312,10 @@ func (c *core) coordinates(f *frame) {
 			}
 		}
 	}
-	c.map1(f.dt, f.bt, x[:], x0[:])
-	c.map1(f.dk, f.bm, x[:], x0[:])
+	if !c.frozen {
+		c.map1(f.dt, f.bt, x[:], x0[:])
+		c.map1(f.dk, f.bm, x[:], x0[:])
+	}
 	for k := 0; k < c.np; k++ {
 		c.map1(f.dp[k*m*q:(k+1)*m*q], f.bp[k*m*n1:(k+1)*m*n1], x[:], x0[:])
 	}
@@ -335,12 +340,11 @@ func (c *core) map1(dst, src, x, x0 []float64) {
 	for i := 0; i < m; i++ {
 		row := src[i*n1 : (i+1)*n1]
 		out := dst[i*q : (i+1)*q]
-		for j := 0; j < n1; j++ {
-			s := 0.0
-			for k, v := range row {
-				s += v * x[k*n1+j]
+		clear(out)
+		for k, v := range row {
+			for j, y := range x[k*n1 : k*n1+n1] {
+				out[j] += v * y
 			}
-			out[j] = s
 		}
 		if c.base {
 			s := 0.0

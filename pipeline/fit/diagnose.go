@@ -276,6 +276,7 @@ func (s *Solver) leaveOneOut(shared []Shared, opt Options, r *Result) {
 		copy(sub.now.b, c.now.b)
 		sub.now.a = drop(sub.now.a, c.now.a, i, 1)
 		sub.now.k = drop(sub.now.k, c.now.k, i, 1)
+		sub.lambda = 0
 		if st, _ := sub.descend(opt.limit()); st == Unusable {
 			continue
 		}

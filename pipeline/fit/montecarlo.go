@@ -252,6 +252,7 @@ func (w *worker) draw(rng *rand.Rand, number int) []float64 {
 	w.red.sums()
 	c.now.zero()
 	copy(c.now.p, t.full.PKa)
+	c.lambda = 0
 	st, _ := c.descend(100)
 	for k := range w.out {
 		if st != Converged {

@@ -113,10 +113,11 @@ func apart(all []candidate, n int, gap float64, most int) []candidate {
 
 // locate finds the plain solution (no nuisance) from the best starts and leaves
 // it in c.now and in s.one. It returns the distinct minima, best first.
-func (s *Solver) locate(p *Problem, opt Options, r *Result) []candidate {
+func (s *Solver) locate(p *Problem, opt Options, r *Result, rough bool) []candidate {
 	c := &s.c
 	list := s.starts(p)
 	var found []candidate
+	c.rough = rough
 	for _, x := range list {
 		s.try(x)
 		st, it := c.descend(opt.limit())
@@ -143,9 +144,12 @@ func (s *Solver) locate(p *Problem, opt Options, r *Result) []candidate {
 	if len(found) == 0 {
 		found = list[:1]
 	}
-	found = apart(found, c.n, 1e-4, 3)
-	c.now.zero()
-	s.try(found[0])
+	c.rough = false
+	found = apart(found, c.n, 0.02, 3)
+	if len(list) > 1 {
+		c.now.zero()
+		s.try(found[0])
+	}
 	s.remember()
 	return found
 }
@@ -154,7 +158,7 @@ func (s *Solver) locate(p *Problem, opt Options, r *Result) []candidate {
 func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	c := &s.c
 	c.plain(p)
-	found := s.locate(p, opt, r)
+	found := s.locate(p, opt, r, true)
 	r.Status = s.own(found, opt, r)
 	if c.now.rss <= 1e-12*c.total && !c.fixed {
 		// The residual is a small difference of large traces: take the full matrix.
@@ -166,35 +170,28 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 		r.Iterations += it
 		s.remember()
 	}
-	c.influences(&s.inf)
-	r.Condition = s.inf.cond
-	if !s.inf.ok {
-		r.Status = Undetermined
+	if !s.write(p, shared, opt, r, &r.Own) {
 		return
 	}
-	c.fill(p, shared, &s.inf, &r.Own)
-	c.libraryRow(p, &s.inf, &r.Own)
-	r.Own.RMS = s.rms(p, opt, r, &r.Own, nil)
 	if !opt.Bare {
 		s.apparentSlope(opt, r)
 	}
-	c.equip(shared)
-	s.restart()
-	st, it := c.descend(opt.limit())
-	r.Iterations += it
-	c.influences(&s.inf)
-	if !s.inf.ok {
-		r.Status = Undetermined
-		return
+	if opt.Bare && !weighty(shared) {
+		r.Full.copyFrom(&r.Own) // no shared reading error: both weightings are one
+	} else {
+		c.equip(shared)
+		s.restart()
+		c.lambda = 0
+		st, it := c.descend(opt.limit())
+		r.Iterations += it
+		if st != Converged {
+			r.Status = st
+		}
+		if !s.write(p, shared, opt, r, &r.Full) {
+			return
+		}
 	}
-	if st != Converged {
-		r.Status = st
-	}
-	c.fill(p, shared, &s.inf, &r.Full)
-	c.libraryRow(p, &s.inf, &r.Full)
-	r.Condition = s.inf.cond
 	if opt.Bare {
-		r.Full.RMS = s.rms(p, opt, r, &r.Full, nil)
 		if p.NonNegative && !c.fixed {
 			s.constrain(p, shared, opt, r)
 		}
@@ -214,16 +211,55 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	}
 }
 
+// write fills est from the state of the core; false: the constants are not fixed.
+func (s *Solver) write(p *Problem, shared []Shared, opt Options, r *Result, est *Estimate) bool {
+	c := &s.c
+	if c.frozen { // derivatives by pH were not needed so far
+		c.frozen = false
+		c.evaluate(&c.now, true)
+	}
+	c.influences(&s.inf)
+	r.Condition = s.inf.cond
+	if !s.inf.ok {
+		r.Status = Undetermined
+		return false
+	}
+	c.fill(p, shared, &s.inf, est)
+	c.libraryRow(p, &s.inf, est)
+	est.RMS = s.rms(p, opt, r, est, nil)
+	return true
+}
+
+// weighty reports whether some shared error moves readings.
+func weighty(shared []Shared) bool {
+	for i := range shared {
+		if shared[i].S != nil && shared[i].U > 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// copyFrom makes e a deep copy of x in the memory that e has.
+func (e *Estimate) copyFrom(x *Estimate) {
+	e.PKa, e.Cov, e.CovOwn = append(e.PKa[:0], x.PKa...), append(e.Cov[:0], x.Cov...), append(e.CovOwn[:0], x.CovOwn...)
+	e.Gain, e.Eta, e.Kappa = append(e.Gain[:0], x.Gain...), append(e.Eta[:0], x.Eta...), append(e.Kappa[:0], x.Kappa...)
+	e.Baseline, e.Components = append(e.Baseline[:0], x.Baseline...), append(e.Components[:0], x.Components...)
+	e.Objective, e.RMS = x.Objective, x.RMS
+}
+
 // own makes the own-weighted estimate from every distinct plain minimum, so
 // that a minimum that only reading errors made look best does not win.
 func (s *Solver) own(found []candidate, opt Options, r *Result) Status {
 	c := &s.c
 	status, best := NotRun, math.Inf(1)
+	free := c.nuisance()
 	for i, x := range found {
-		if i > 0 && !c.nuisance() {
+		if i > 0 && !free {
 			break
 		}
 		c.equip(nil)
+		c.frozen = !free
 		c.now.zero()
 		s.try(x)
 		st, it := c.descend(opt.limit())
@@ -233,7 +269,7 @@ func (s *Solver) own(found []candidate, opt Options, r *Result) Status {
 			s.remember()
 		}
 	}
-	if len(found) > 1 && c.nuisance() {
+	if len(found) > 1 && free {
 		c.now.zero()
 		s.restart()
 		c.evaluate(&c.now, true)

@@ -131,7 +131,7 @@ func (s *Solver) settleNoise(p *Problem, opt Options) error {
 	}
 	if !ok {
 		c.plain(p)
-		s.locate(p, opt, nil)
+		s.locate(p, opt, nil, false)
 		free := float64((c.m-c.n1)*c.w - c.n)
 		if c.fixed {
 			free = float64(c.m*c.w - c.n - 1)
@@ -181,7 +181,8 @@ func (c *core) plain(p *Problem) {
 
 // equip switches nuisance parameters on, with the shared errors or without.
 func (c *core) equip(shared []Shared) {
-	p := append([]float64(nil), c.now.p...)
+	var p [maxSteps + 1]float64
+	copy(p[:], c.now.p)
 	c.shape(c.np, len(shared))
 	c.frozen = false
 	c.shift = grow(c.shift, c.m*len(shared))
@@ -193,7 +194,7 @@ func (c *core) equip(shared []Shared) {
 			}
 		}
 	}
-	copy(c.now.p, p)
+	copy(c.now.p, p[:])
 }
 
 // remember and restart keep a solution over a change of shape.

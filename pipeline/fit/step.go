@@ -212,15 +212,21 @@ func (c *core) gradient(f *frame) float64 {
 func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
 	m, q, ne, np := c.m, c.q, c.ne, c.np
 	n := ne + np + c.nb
-	c.assemble(f, lambda)
-	c.hold(n)
-	if !cholesky(c.a.mat, n) {
-		return 0, 0, false
-	}
 	sol := c.a.sol
-	copy(sol, c.a.rhs)
-	forward(c.a.mat, n, sol)
-	backward(c.a.mat, n, sol)
+	if c.frozen && ne > 0 && c.pair < 0 && c.pin < 0 {
+		if !c.solvePlain(f, lambda) {
+			return 0, 0, false
+		}
+	} else {
+		c.assemble(f, lambda)
+		c.hold(n)
+		if !cholesky(c.a.mat, n) {
+			return 0, 0, false
+		}
+		copy(sol, c.a.rhs)
+		forward(c.a.mat, n, sol)
+		backward(c.a.mat, n, sol)
+	}
 	c.gradient(f)
 	dp, db := sol[ne:ne+np], sol[ne+np:]
 	if c.pair >= 0 {
@@ -236,6 +242,11 @@ func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
 	for k, d := range db {
 		g.b[k] = f.b[k] + d
 		pred += d * (c.a.work[np+k] + lambda*d)
+	}
+	if c.frozen {
+		copy(g.a, f.a)
+		copy(g.k, f.k)
+		return pred, move, true
 	}
 	var e small
 	var rr [maxSteps + 2]float64
@@ -269,6 +280,52 @@ func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
 		pred += da*(ga+lambda*da) + dk*(gk+lambda*dk)
 	}
 	return pred, move, true
+}
+
+// solvePlain solves for the constants alone when nothing else is uncertain: the
+// spectra then have unit information, and eliminating them leaves Kaufman's
+// projected Jacobian, n x n.
+func (c *core) solvePlain(f *frame, lambda float64) bool {
+	m, n1, q, np := c.m, c.n1, c.q, c.np
+	var x [maxSteps * (maxSteps + 1) * (maxSteps + 2)]float64 // Q'D per constant and coordinate
+	h, g := c.a.mat[:np*np], c.a.rhs[:np]
+	clear(g)
+	for k := 0; k < np; k++ {
+		d := f.dp[k*m*q : (k+1)*m*q]
+		xk := x[k*q*n1 : (k+1)*q*n1]
+		for i := 0; i < m; i++ {
+			di := d[i*q : (i+1)*q]
+			qi := f.q[i*n1 : (i+1)*n1]
+			for l, v := range di[:n1] {
+				xl := xk[l*n1 : (l+1)*n1]
+				for j, y := range qi {
+					xl[j] += v * y
+				}
+			}
+			if c.base {
+				xl, v := xk[n1*n1:], di[n1]
+				for j, y := range f.q0[i*n1 : (i+1)*n1] {
+					xl[j] += v * y
+				}
+			}
+		}
+		g[k] = dot(d, f.c[:m*q])
+		for l := 0; l <= k; l++ {
+			h[k*np+l] = dot(d, f.dp[l*m*q:(l+1)*m*q]) - dot(xk, x[l*q*n1:(l+1)*q*n1])
+		}
+	}
+	for k := 0; k < np; k++ {
+		c.a.diag[k] = h[k*np+k]
+		h[k*np+k] *= 1 + lambda
+	}
+	if !cholesky(h, np) {
+		return false
+	}
+	sol := c.a.sol[c.ne : c.ne+np]
+	copy(sol, g)
+	forward(h, np, sol)
+	backward(h, np, sol)
+	return true
 }
 
 // reduceByMove subtracts from the residual coordinates of rung i what the move
@@ -332,14 +389,20 @@ func (c *core) hold(n int) {
 	*at(k, k), rhs[k] = 1, 0
 }
 
-// descend runs Levenberg-Marquardt from the parameters in c.now.
+// descend runs Levenberg-Marquardt from the parameters in c.now, with damping
+// c.lambda at first; c.rough ends it early where a start for another descent
+// is all that is wanted.
 func (c *core) descend(limit int) (Status, int) {
 	c.evaluate(&c.now, true)
-	lambda := 1e-3
+	lambda := c.lambda
 	if !(c.now.phi < math.Inf(1)) {
 		return Unusable, 0
 	}
 	noise := 1e-14 * c.total
+	tolerance := 1e-10
+	if c.rough {
+		tolerance = 2e-3
+	}
 	for it := 1; it <= limit; it++ {
 		pred, move, ok := c.step(&c.now, &c.try, lambda)
 		if !ok {
@@ -349,9 +412,16 @@ func (c *core) descend(limit int) (Status, int) {
 			lambda = math.Max(10*lambda, 1e-3)
 			continue
 		}
+		if move > 3 {
+			lambda = math.Max(8*lambda, 1e-4)
+			if lambda > 1e12 {
+				return HitLimit, it
+			}
+			continue
+		}
 		c.evaluate(&c.try, true)
 		gain := c.now.phi - c.try.phi
-		if !(c.try.phi <= c.now.phi+noise) || move > 3 {
+		if !(c.try.phi <= c.now.phi+noise) {
 			if lambda > 1e12 {
 				return HitLimit, it
 			}
@@ -359,7 +429,7 @@ func (c *core) descend(limit int) (Status, int) {
 			continue
 		}
 		c.now, c.try = c.try, c.now
-		if move < 1e-10 && lambda <= 1e-3 && pred <= 1e-10*(1+1e-6*c.now.phi)+noise {
+		if move < tolerance && lambda <= 1e-3 && (c.rough || pred <= 1e-10*(1+1e-6*c.now.phi)+noise) {
 			return Converged, it
 		}
 		switch {
