@@ -159,7 +159,10 @@ func (r *reader) sheet(t *table) (*parse.Content, error) {
 			return nil, err
 		}
 		for i, h := range t.heads {
-			if i < len(row.cells) && t.unread(i, label) && h != "" {
+			if i < len(row.cells) && t.unread(i, label) {
+				if h == "" {
+					h = fmt.Sprintf("column %d", i+1)
+				}
 				if v := parse.Clean(row.cells[i]); v != "" {
 					s.Other = append(s.Other, parse.Field{Key: h, Value: v})
 				}
