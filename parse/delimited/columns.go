@@ -61,15 +61,34 @@ func (r *reader) traces(a *reading, f facts) ([]trace, error) {
 		if len(by[q]) == 0 {
 			continue
 		}
-		if r.lay.Ordinate != "" {
+		if mode != qUnknown && r.lay.Ordinate != "" {
+			if err := r.contradicted(a.header+1, "ordinate", mode, q, mode == qPercent && q == qTransmittance || mode == qAbsorbance && q == qMilli); err != nil {
+				return nil, err
+			}
 			for i := range by[q] {
-				by[q][i].quantity = mode
+				if q != qMilli || mode != qAbsorbance {
+					by[q][i].quantity = mode
+				}
 			}
 		}
 		r.skipped(a, by, q)
 		return by[q], nil
 	}
 	return r.unnamedQuantity(a, f, by, mode)
+}
+
+// contradicted deals with a layout that declares other than the file says: a
+// layout bound to the file by its name overrides it with a remark, one for
+// every file does not fit.
+func (r *reader) contradicted(line int, what, declared, stated string, agree bool) error {
+	if declared == stated || stated == "" || agree {
+		return nil
+	}
+	if r.lay.Files == "" {
+		return r.refuse(line, what, parse.Show(stated), parse.Show(declared)+" as the layout declares", "give the layout a files pattern if the file is wrong")
+	}
+	r.remark(line, "%s: the file says %s; read as %s, as the layout declares", what, stated, declared)
+	return nil
 }
 
 // unnamedQuantity settles traces whose heads state no quantity: the header or
@@ -270,6 +289,13 @@ func (r *reader) scan(a *reading, t trace, f facts, pre []entry, of int) (parse.
 	own := r.columnFacts(a, t, f, pre, of)
 	s := newScan(own)
 	unit, _ := r.axisUnitOf(a, t.axis, f)
+	stated := axisUnit(a.head(t.axis))
+	if stated == "" {
+		stated = axisUnit(a.unit(t.axis))
+	}
+	if err := r.contradicted(a.header+1, "abscissa", unit, stated, false); err != nil {
+		return s, err
+	}
 	if err := r.nanometres(x, unit, max(a.header, 0)+1); err != nil {
 		return s, err
 	}

@@ -462,3 +462,23 @@ func TestQuotes(t *testing.T) {
 		}
 	}
 }
+
+// TestContradiction: a layout for every file gives way to what a file says, a
+// layout bound to it by name overrides it and says so.
+func TestContradiction(t *testing.T) {
+	text := spectrum("Wavelength (nm),Absorbance\n", "%.1f,%.5f", 41, band)
+	for _, l := range []parse.Layout{{Name: "t", Ordinate: "percent transmittance"}, {Name: "u", Abscissa: "um"}} {
+		c := mustRead(t, text, parse.Options{Layouts: []parse.Layout{l}})
+		if s := c.Scans[0]; s.Scale != "absorbance" || s.WavelengthNM[0] != 400 || c.Layout == l.Name {
+			t.Errorf("layout %s: %s from %g nm", l.Name, s.Scale, s.WavelengthNM[0])
+		}
+	}
+	c := mustRead(t, strings.ReplaceAll(text, "Absorbance", "Transmittance"), declared(parse.Layout{Ordinate: "absorbance"}))
+	if c.Scans[0].Scale != "absorbance" || !remarked(c, "the file says transmittance") {
+		t.Errorf("%s, %v", c.Scans[0].Scale, c.Remarks)
+	}
+	c = mustRead(t, strings.ReplaceAll(text, "(nm)", "(um)"), declared(parse.Layout{Abscissa: "nm"}))
+	if c.Scans[0].WavelengthNM[0] != 400 || !remarked(c, "the file says um") {
+		t.Errorf("%g, %v", c.Scans[0].WavelengthNM[0], c.Remarks)
+	}
+}
