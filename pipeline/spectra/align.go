@@ -266,8 +266,8 @@ func removeBasis(row []float64, q [][]float64) {
 // formsSeen decomposes the set into the components that are forms. A colourless
 // form adds none, and noise in its place would pass for displacements. A clear
 // component beyond the expected ones is a form too (a step or a dye that nobody
-// announced) unless it looks like the derivative of the others: that is what
-// displaced scans leave.
+// announced) unless it is rough along the wavelengths, or looks like the
+// derivative of the others: that is what displaced scans leave.
 func (p *preparation) formsSeen(a []float64, m, w int, cols []int) factor {
 	wide := factorise(a, m, w, min(p.opt.Forms+2, m))
 	clear := wide.clear(rowNoise(a, m, w), 3)
@@ -276,6 +276,9 @@ func (p *preparation) formsSeen(a []float64, m, w int, cols []int) factor {
 		f := wide.first(k)
 		q := f.rightBasis()
 		v := append([]float64(nil), wide.v[k*w:(k+1)*w]...)
+		if dot(v[1:], v[:w-1]) < 0.8 {
+			break // a spike or one noisy scan
+		}
 		removeBasis(v, q)
 		whole := dot(v, v)
 		d := p.componentSlopes(f, cols)

@@ -326,7 +326,7 @@ func (p *preparation) spikes() {
 	if m <= p.opt.Forms || w < 20 {
 		return
 	}
-	r := factorise(a, m, w, p.opt.Forms).residual(a)
+	r := p.formsSeen(a, m, w, cols).residual(a)
 	hit := make(map[int]bool)
 	for i := range m {
 		row := r[i*w : (i+1)*w]
@@ -358,14 +358,14 @@ func largest(row []float64) float64 {
 	return most
 }
 
-// withoutTrend takes the running median of 15 points off.
+// withoutTrend takes the running median of 15 points off; the outer seven
+// points, which have none, are set to zero.
 func withoutTrend(y []float64) []float64 {
 	out := make([]float64, len(y))
 	var window [15]float64
-	for j := range y {
-		lo := max(0, min(j-7, len(y)-15))
-		n := copy(window[:], y[lo:min(lo+15, len(y))])
-		out[j] = y[j] - median(window[:n])
+	for j := 7; j+7 < len(y); j++ {
+		copy(window[:], y[j-7:j+8])
+		out[j] = y[j] - median(window[:])
 	}
 	return out
 }
