@@ -70,3 +70,20 @@ func benchPair(b *testing.B, data []byte) {
 		b.Fatal("not read")
 	}
 }
+
+// TestReadAllocs: allocations do not grow with the points.
+func TestReadAllocs(t *testing.T) {
+	count := func(n int) float64 {
+		data := benchFile(n, ",")
+		return testing.AllocsPerRun(20, func() {
+			if _, err := Read("f", data, parse.Options{Role: "scan"}); err != nil {
+				t.Fatal(err)
+			}
+		})
+	}
+	few, many := count(601), count(6001)
+	if many > few+16 {
+		t.Errorf("%g allocations for 601 points, %g for 6001", few, many)
+	}
+	t.Logf("%g allocations for 601 points, %g for 6001", few, many)
+}

@@ -135,21 +135,29 @@ func (o *writer) calibrations(cs []parse.Calibration) {
 
 func (o *writer) sheet(rows []parse.Row) {
 	heads := []string{"position", "set", "rung", "role", "compound", "lot", "dilution", "ionic strength (mol/L)", "buffer", "cosolvent", "cosolvent %", "pH"}
-	place := map[string]int{}
+	place := map[string][]int{} // the columns of a key, one for each time a row holds it
+	column := func(seen map[string]int, key string) int {
+		k := seen[key]
+		seen[key]++
+		if k == len(place[key]) {
+			place[key] = append(place[key], len(heads))
+			heads = append(heads, key)
+		}
+		return place[key][k]
+	}
 	for _, s := range rows {
+		seen := map[string]int{}
 		for _, f := range s.Other {
-			if _, ok := place[f.Key]; !ok {
-				place[f.Key] = len(heads)
-				heads = append(heads, f.Key)
-			}
+			column(seen, f.Key)
 		}
 	}
 	o.row(heads...)
 	for _, s := range rows {
 		cells := make([]string, len(heads))
 		copy(cells, []string{s.Position, s.Set, s.Rung, s.Role, s.Compound, s.Lot, positive(s.Dilution), figure(s.IonicStrength), s.Buffer, s.Cosolvent, figure(s.CosolventPct), figure(s.PH)})
+		seen := map[string]int{}
 		for _, f := range s.Other {
-			cells[place[f.Key]] = f.Value
+			cells[column(seen, f.Key)] = f.Value
 		}
 		o.row(cells...)
 	}
