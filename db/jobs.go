@@ -151,3 +151,22 @@ func (s *Store) Gauges(ctx context.Context, now time.Time) (map[string]map[strin
 	}
 	return out, nil
 }
+
+// NightLines gives one line per set of a night: its key and what it amounts
+// to now, sorted. Two equal answers mean that nothing has changed for people.
+func (s *Store) NightLines(ctx context.Context, night string) ([]string, error) {
+	rows, err := s.pool.Query(ctx, `
+		SELECT s.key || ' ' || coalesce(st.verdict || coalesce(' ' || round(p.pka::numeric, 3)::text, ''), s.state)
+		FROM pkvigil.sample_set s
+		LEFT JOIN pkvigil.standing st ON st.set_id = s.id AND st.current
+		LEFT JOIN pkvigil.result_pka p ON p.result_id = st.result_id AND p.step = 1
+		WHERE s.night = $1::date ORDER BY s.key`, night)
+	if err != nil {
+		return nil, fmt.Errorf("reading night %s: %w", night, safe(err))
+	}
+	out, err := pgx.CollectRows(rows, pgx.RowTo[string])
+	if err != nil {
+		return nil, fmt.Errorf("reading night %s: %w", night, safe(err))
+	}
+	return out, nil
+}

@@ -118,32 +118,8 @@ func (s *Service) writeBrief(d *brief.Data) (string, error) {
 
 // nightState is one line per set of a night: what a brief says of it.
 func (s *Service) nightState(ctx context.Context, night string) (string, error) {
-	sets, err := s.store.SetsOfNight(ctx, nil, night, "")
-	if err != nil {
-		return "", err
-	}
-	results, err := s.store.ResultsBetween(ctx, nil, night, night, "")
-	if err != nil {
-		return "", err
-	}
-	verdict := map[int64]string{}
-	for _, r := range results {
-		v := r.Standing.Verdict
-		if len(r.PKa) > 0 {
-			v += fmt.Sprintf(" %.3f", r.PKa[0].PKa)
-		}
-		verdict[r.SetID] = v
-	}
-	var lines []string
-	for _, x := range sets {
-		v := verdict[x.ID]
-		if v == "" {
-			v = x.State
-		}
-		lines = append(lines, x.Key+" "+v)
-	}
-	slices.Sort(lines)
-	return strings.Join(lines, "\n"), nil
+	lines, err := s.store.NightLines(ctx, night)
+	return strings.Join(lines, "\n"), err
 }
 
 // differences lists what changed between two states.

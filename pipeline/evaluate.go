@@ -1,6 +1,7 @@
 package pipeline
 
 import (
+	"bytes"
 	"cmp"
 	"context"
 	"encoding/json"
@@ -116,12 +117,48 @@ func (s *Service) scene(ctx context.Context, ts []*track, night string, now time
 	if err := s.masks(ctx, sc, now); err != nil {
 		return nil, err
 	}
-	model, err := drift.NewModel(sc.cells, drift.Rules{FalseAlarmNights: set.Charts.FalseAlarmNights}, drift.Weighted)
+	var err error
+	sc.model, err = s.model(sc.cells, set.Charts.FalseAlarmNights)
+	return sc, err
+}
+
+// model gives the fingerprints of all causes for the cells. They are costly
+// and change only with a baseline, so the last one is kept.
+func (s *Service) model(cells []drift.Cell, nights float64) (*drift.Model, error) {
+	key, err := encode(cells)
 	if err != nil {
 		return nil, err
 	}
-	sc.model = model
-	return sc, nil
+	s.cacheMu.Lock()
+	defer s.cacheMu.Unlock()
+	if s.lastModel == nil || !bytes.Equal(key, s.lastCells) {
+		m, err := drift.NewModel(cells, drift.Rules{FalseAlarmNights: nights}, drift.Weighted)
+		if err != nil {
+			return nil, err
+		}
+		s.lastModel, s.lastCells = m, key
+	}
+	return s.lastModel, nil
+}
+
+// prints gives the fingerprints of the habits for a design, once per design.
+func (s *Service) prints(d *drift.Design) map[drift.Cause][]map[drift.Characteristic]float64 {
+	s.cacheMu.Lock()
+	defer s.cacheMu.Unlock()
+	if p, ok := s.habitPrints[d]; ok {
+		return p
+	}
+	p := map[drift.Cause][]map[drift.Characteristic]float64{}
+	for cause := range habits() {
+		if cols, err := drift.Fingerprint(*d, cause, drift.Weighted); err == nil {
+			p[cause] = cols
+		}
+	}
+	if s.habitPrints == nil {
+		s.habitPrints = map[*drift.Design]map[drift.Cause][]map[drift.Characteristic]float64{}
+	}
+	s.habitPrints[d] = p
+	return p
 }
 
 // least is the number of baseline nights a characteristic needs before it may
@@ -167,7 +204,7 @@ func (s *Service) cell(ctx context.Context, set *settings.Settings, ts []*track,
 		}
 		c.Design = d
 	}
-	c.Cov = covariance(c, use)
+	c.Cov = s.covariance(c, use)
 	return c, observations(c.Key, use, k, first), nil
 }
 
@@ -216,7 +253,7 @@ func habits() map[drift.Cause]float64 {
 
 // covariance combines the correlation that the design implies with the spread
 // that the baseline shows.
-func covariance(c *drift.Cell, use []*track) []float64 {
+func (s *Service) covariance(c *drift.Cell, use []*track) []float64 {
 	k := len(use)
 	cov := make([]float64, k*k)
 	own := make([]float64, k*k)
@@ -224,12 +261,10 @@ func covariance(c *drift.Cell, use []*track) []float64 {
 		own[i*k+i] = 0.25 * t.sd * t.sd // a quarter of the variance is the set's own noise at least
 	}
 	if c.Kind == drift.ReferenceCell && c.Design != nil {
-		for cause, size := range habits() {
-			cols, err := drift.Fingerprint(*c.Design, cause, drift.Weighted)
-			if err != nil {
-				continue
-			}
-			for _, f := range cols {
+		prints, sizes := s.prints(c.Design), habits()
+		for _, cause := range slices.Sorted(maps.Keys(prints)) {
+			size := sizes[cause]
+			for _, f := range prints[cause] {
 				for i := range use {
 					for j := range use {
 						own[i*k+j] += f[use[i].characteristic()] * f[use[j].characteristic()] * size * size

@@ -174,12 +174,16 @@ func (s *Service) tracks(ctx context.Context, q db.Querier, until time.Time) ([]
 		}
 		t.points[i] = append(t.points[i], p)
 	}
+	tonight := ""
+	for _, t := range byKey {
+		tonight = max(tonight, t.nights[len(t.nights)-1])
+	}
+	set, _, _ := s.current()
 	var out []*track
 	for _, k := range slices.Sorted(maps.Keys(byKey)) {
 		t := byKey[k]
 		t.settle()
-		set, _, _ := s.current()
-		t.learn(set.Charts)
+		t.learn(set.Charts, tonight)
 		out = append(out, t)
 	}
 	return out, nil
@@ -238,9 +242,12 @@ func (t *track) chartValues() []chart.Value {
 }
 
 // learn finds the baseline in force: the nights a frozen version names, or the
-// first nights of the chart.
-func (t *track) learn(c settings.Charts) {
+// first nights of the chart. Tonight is never part of what judges it.
+func (t *track) learn(c settings.Charts, tonight string) {
 	lo, hi := 0, len(t.nights)
+	for hi > 0 && t.nights[hi-1] >= tonight {
+		hi--
+	}
 	if b := t.stored; b != nil && !b.FrozenAt.IsZero() {
 		for lo < hi && t.nights[lo] < b.FromNight {
 			lo++
@@ -251,6 +258,10 @@ func (t *track) learn(c settings.Charts) {
 	} else if n := max(c.BaselineNights, 3); hi > n {
 		hi = n
 	}
+	if hi < lo {
+		lo = hi
+	}
+	t.judged = hi
 	values := t.chartValues()[lo:hi]
 	t.base = chart.LearnOn(t.scale(), values, t.budget())
 	var raw []float64
@@ -285,20 +296,40 @@ func (t *track) budget() float64 {
 	return math.Hypot(b, t.own)
 }
 
-// rules are the chart rules of the settings.
-func chartRules(c settings.Charts) chart.Rules {
-	r := chart.DefaultRules()
-	if c.Multirule {
-		r.Runs = chart.Multirule()
+// chartRules are the chart rules that keep the tolerable rate of false alarms
+// over all charts together. Designing them costs a sixth of a second, so the
+// last design is kept.
+func (s *Service) chartRules(c settings.Charts, charts int) (chart.Rules, error) {
+	key := fmt.Sprintf("%v %d", c, charts)
+	s.cacheMu.Lock()
+	defer s.cacheMu.Unlock()
+	if s.rulesKey == key {
+		return s.chartDesign, nil
 	}
-	return r
+	kinds := chart.DefaultRules()
+	if c.Multirule {
+		kinds.Runs = chart.Multirule()
+	}
+	nights := c.FalseAlarmNights
+	if nights <= 0 {
+		nights = 365
+	}
+	rules, _, err := chart.LimitsFor(nights, charts, kinds)
+	if err != nil {
+		return rules, fmt.Errorf("chart limits for one false alarm in %g nights over %d charts: %w", nights, charts, err)
+	}
+	s.chartDesign, s.rulesKey = rules, key
+	return rules, nil
 }
 
 // judgeCharts judges the newest night of every chart and stores what the
 // charts say; baselines are stored when they change their stage.
 func (s *Service) judgeCharts(ctx context.Context, tx pgx.Tx, ts []*track, now time.Time) ([]chartSignal, error) {
 	set, _, _ := s.current()
-	rules := chartRules(set.Charts)
+	rules, err := s.chartRules(set.Charts, chartsPerInstrument)
+	if err != nil {
+		return nil, err
+	}
 	var signals []chartSignal
 	var rows []db.PointJudgement
 	for _, t := range ts {
@@ -329,6 +360,10 @@ func (s *Service) judgeCharts(ctx context.Context, tx pgx.Tx, ts []*track, now t
 	}
 	return signals, s.store.PutPointJudgements(ctx, tx, rows)
 }
+
+// chartsPerInstrument is how many charts an instrument is counted to have when
+// the tolerable rate is shared out: three references of sixteen characteristics.
+const chartsPerInstrument = 48
 
 // A chartSignal is a rule of a chart that fired tonight.
 type chartSignal struct {
@@ -362,7 +397,7 @@ func (s *Service) keepBaseline(ctx context.Context, tx pgx.Tx, t *track, c setti
 	if b := t.stored; b != nil && b.Stage == string(t.base.Stage) && !freeze {
 		return &b.ID, nil
 	}
-	n := min(len(t.nights), max(c.BaselineNights, 3))
+	n := max(1, min(t.judged, max(c.BaselineNights, 3)))
 	row := &db.Baseline{Series: t.series, Stage: string(t.base.Stage), Centre: t.base.Centre, Spread: t.base.SD, N: t.learned,
 		FromNight: t.nights[0], ToNight: t.nights[n-1], At: now, Because: "first nights of this chart"}
 	if freeze {

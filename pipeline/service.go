@@ -19,6 +19,7 @@ import (
 
 	"pkvigil/db"
 	"pkvigil/db/cluster"
+	"pkvigil/pipeline/chart"
 	"pkvigil/pipeline/drift"
 	"pkvigil/pipeline/naming"
 	"pkvigil/pipeline/settings"
@@ -69,6 +70,9 @@ type Service struct {
 	cacheMu      sync.Mutex
 	designs      map[string]*drift.Design // archived designs by instrument, reference and lot
 	records      map[int64]storedRecord
+	lastModel    *drift.Model
+	lastCells    []byte
+	habitPrints  map[*drift.Design]map[drift.Cause][]map[drift.Characteristic]float64
 	dbAway       atomic.Bool // the last take-in found the database away
 	final        atomic.Bool // what stands in the folders is all there will be
 

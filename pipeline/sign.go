@@ -317,7 +317,7 @@ func (s *Service) signBaseline(ctx context.Context, tx pgx.Tx, g Signature, d *d
 		}
 		t.stored = &db.Baseline{FrozenAt: d.At, FromNight: g.Object[1], ToNight: g.Object[2]}
 		set, _, _ := s.current()
-		t.learn(set.Charts)
+		t.learn(set.Charts, "9999-12-31")
 		if t.learned < 3 {
 			continue
 		}

@@ -176,9 +176,7 @@ func (o *Outcome) describePreparation(pr pairing) {
 	for _, r := range o.Prepared.Records {
 		switch r.Key {
 		case "scan.clone":
-			o.Facts.Cloned = append(o.Facts.Cloned, [2]string{r.Rung, r.Text})
-		case "scan.twice":
-			o.Facts.Doubled = append(o.Facts.Doubled, [2]string{r.Rung, r.Text})
+			o.Facts.Cloned = append(o.Facts.Cloned, [2]string{r.Other, r.Rung})
 		}
 	}
 }

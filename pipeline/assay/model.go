@@ -294,7 +294,7 @@ func (in *Input) instrumentCeiling() float64 {
 
 // preparation are the options for the spectra.
 func (in *Input) preparation() spectra.Options {
-	o := spectra.Options{Ceiling: in.instrumentCeiling(), SigmaA: or(in.Instrument.SigmaA, defaultSigmaA)}
+	o := spectra.Options{Ceiling: in.instrumentCeiling(), SigmaA: or(in.Instrument.SigmaA, defaultSigmaA), Forms: in.steps() + 1}
 	if c := in.Compound; c != nil {
 		if len(c.Range) == 2 {
 			o.RangeNM = [2]float64{c.Range[0], c.Range[1]}
