@@ -133,6 +133,7 @@ type track struct {
 	base    chart.Baseline
 	centre  float64 // of the raw values, squares included as they are
 	sd      float64
+	judged  int     // nights that may be behind the baseline: the first so many of the chart
 	learned int     // nights behind centre and sd
 	own     float64 // median of the points' own standard deviations; 0 unknown
 }

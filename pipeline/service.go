@@ -72,6 +72,8 @@ type Service struct {
 	records      map[int64]storedRecord
 	lastModel    *drift.Model
 	lastCells    []byte
+	rulesKey     string
+	chartDesign  chart.Rules
 	habitPrints  map[*drift.Design]map[drift.Cause][]map[drift.Characteristic]float64
 	dbAway       atomic.Bool // the last take-in found the database away
 	final        atomic.Bool // what stands in the folders is all there will be
