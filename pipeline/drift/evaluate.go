@@ -38,7 +38,7 @@ func (l *look) passes(ev *Evaluation) (found []*ranked) {
 		if top < 0 {
 			break
 		}
-		score := outs[top].best.lnB
+		score := outs[top].score()
 		if len(found) == 0 {
 			ev.Score = score
 		}
@@ -77,7 +77,7 @@ func (m *Model) Score(h History) (score float64, hypotheses int, err error) {
 	if top < 0 {
 		return 0, l.hypotheses(), nil
 	}
-	return outs[top].best.lnB, l.hypotheses(), nil
+	return outs[top].score(), l.hypotheses(), nil
 }
 
 func (l *look) hypotheses() int {
@@ -93,7 +93,7 @@ func (l *look) scanAll(keep bool) (outs []outcome, top int) {
 	outs, top = make([]outcome, len(l.scopes)), -1
 	for i := range l.scopes {
 		outs[i] = l.scan(&l.scopes[i], keep)
-		if outs[i].any && (top < 0 || outs[i].best.lnB > outs[top].best.lnB) {
+		if outs[i].any && (top < 0 || outs[i].score() > outs[top].score()) {
 			top = i
 		}
 	}
@@ -128,7 +128,7 @@ func (l *look) rank(outs []outcome) *ranked {
 		if !o.any {
 			continue
 		}
-		r.score = math.Max(r.score, o.best.lnB)
+		r.score = math.Max(r.score, o.score())
 		r.list = append(r.list, l.weighOnsets(o))
 	}
 	slices.SortStableFunc(r.list, func(a, b rankedCause) int {

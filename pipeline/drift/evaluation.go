@@ -99,7 +99,7 @@ type Touched struct {
 // An Evaluation is the judgement of one night.
 type Evaluation struct {
 	Night        Night         `json:"night"`
-	Score        float64       `json:"score"` // group score: largest ln B
+	Score        float64       `json:"score"` // group score: largest ln B, or ln of the weighted sum over onsets where that is larger
 	Threshold    float64       `json:"threshold"`
 	Rings        bool          `json:"rings"`
 	Hypotheses   int           `json:"hypotheses"`   // cause x resource x shape

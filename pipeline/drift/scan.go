@@ -131,7 +131,20 @@ type outcome struct {
 	shape  Shape
 	onset  int
 	any    bool
+	sum    float64 // ln of the weighted sum over onsets and shapes
 }
+
+// score is what the group score takes the largest of: the best single
+// hypothesis or the sum over onsets. The sum sees small steps sooner, in which no onset stands out;
+// the best one sees large steps sooner.
+func (o *outcome) score() float64 { return math.Max(o.best.lnB, o.sum) }
+
+// Weights of the sum over onsets, ln: found by comparing delays with tuned
+// cumulative sums.
+const (
+	stepWeight  = -1.0
+	shapeWeight = -2.0
+)
 
 // scanner walks the onsets of one scope backwards through the nights.
 type scanner struct {
@@ -185,7 +198,7 @@ type entry struct {
 func (l *look) scan(s *scope, keep bool) outcome {
 	tr := l.m.traits[s.trait]
 	c := newScanner(l, s, tr)
-	out := outcome{s: s, shapes: tr.Shapes, best: hypothesis{lnB: math.Inf(-1)}}
+	out := outcome{s: s, shapes: tr.Shapes, best: hypothesis{lnB: math.Inf(-1)}, sum: math.Inf(-1)}
 	if keep {
 		out.lnB = make([][]float64, len(tr.Shapes))
 		for i := range out.lnB {
@@ -204,6 +217,13 @@ func (l *look) scan(s *scope, keep bool) outcome {
 			}
 			if keep {
 				out.lnB[k][t] = h.lnB
+			}
+			weight := shapeWeight
+			if sh == ShapeStep {
+				weight = stepWeight
+			}
+			if h.lnB > out.sum-20 {
+				out.sum = logAdd(out.sum, h.lnB+weight)
 			}
 			if h.lnB > out.best.lnB {
 				out.best, out.shape, out.onset, out.any = h, sh, t, true

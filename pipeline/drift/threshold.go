@@ -8,13 +8,15 @@ import (
 	"slices"
 )
 
-// Threshold bounds the ln B at which a group score of n hypotheses (cause x
-// resource x shape) may ring if one false case in so many nights is
-// tolerable: a Bayes factor for one onset is a martingale under no change, so it
-// ever exceeds b with probability at most 1/b (Ville 1939), and n of them start
-// each night. Calibrate finds the lower value that really gives the rate.
+// Threshold bounds the group score of n hypotheses (cause x resource x shape) that
+// may ring if one false case in so many nights is tolerable. Under no change a Bayes
+// factor for one onset is a martingale, so it ever exceeds b with probability at most 1/b
+// (Ville 1939), and the sum over onsets less the number of nights is one too, so it
+// exceeds b after b nights on average or later (Pollak 1985). The two parts of the score, the second
+// with weight 1/e, together ring in at most (1+1/e) n exp(-threshold) of the
+// nights. Calibrate finds the lower value that really gives the rate.
 func Threshold(n int, nights float64) float64 {
-	return math.Log(math.Max(1, float64(n)) * math.Max(1, nights))
+	return math.Log((1 + 1/math.E) * math.Max(1, float64(n)) * math.Max(1, nights))
 }
 
 // SingleThreshold bounds the ln B of one evaluation by itself: ln(20 n w), for n hypotheses
