@@ -5,6 +5,7 @@ import (
 	"errors"
 	"fmt"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -33,6 +34,9 @@ func readBack(t *testing.T, data []byte, opt parse.Options) {
 	}
 	for _, s := range c.Scans {
 		sane(t, s)
+		if len(s.WavelengthNM) < leastPoints {
+			return // only a declared layout reads so few
+		}
 	}
 	var out bytes.Buffer
 	if err := Write(&out, c, opt.Zone); err != nil {
@@ -107,6 +111,7 @@ func difference(a, b *parse.Content) string {
 		}
 		for _, r := range c.Sheet {
 			r.Line = 0
+			r.Other = slices.SortedStableFunc(slices.Values(r.Other), func(a, b parse.Field) int { return strings.Compare(a.Key, b.Key) })
 			fmt.Fprintf(&o, "row %+v\n", r)
 		}
 		for _, e := range c.Events {

@@ -277,7 +277,8 @@ func (r *reader) readRows(t *table) {
 	r.found.Delimiter, r.found.Decimal = delimiterWord(t.d.delim), string(rune(t.d.point))
 }
 
-// unitsRow tells whether the first row below the heads gives their units.
+// unitsRow tells whether the first row below the heads gives their units:
+// nothing but units, and none where names stand.
 func (t *table) unitsRow(cells [][]byte) bool {
 	text := make([]string, len(cells))
 	for i, c := range cells {
@@ -285,6 +286,11 @@ func (t *table) unitsRow(cells [][]byte) bool {
 	}
 	if !allUnits(text) {
 		return false
+	}
+	for _, m := range [...]int{colRung, colPosition, colSample, colNumber, colSet, colRole, colCompound, colLot, colBuffer, colCosolvent, colElectrode, colMeter, colKind, colResource, colInstrument, colText, colBy, colNight, colSlot} {
+		if c := t.col[m]; c >= 0 && c < len(text) && text[c] != "" {
+			return false // a name that looks like a unit
+		}
 	}
 	for i, u := range text {
 		if i < len(t.units) && t.units[i] == "" {
