@@ -77,13 +77,15 @@ func scaledCondition(cov []float64, stride, n int) float64 {
 		}
 		return math.Inf(1)
 	}
-	r := make([]float64, n*n)
+	var buf [maxSteps * maxSteps]float64
+	var vals [maxSteps]float64
+	r, val := buf[:n*n], vals[:n]
 	for i := 0; i < n; i++ {
 		for j := 0; j < n; j++ {
 			r[i*n+j] = cov[i*stride+j] / math.Sqrt(cov[i*stride+i]*cov[j*stride+j])
 		}
 	}
-	val := symmetricEigen(r, n, nil)
+	eigenInto(val, r, n, nil)
 	if !(val[n-1] > 0) {
 		return math.Inf(1)
 	}

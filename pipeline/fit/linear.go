@@ -163,6 +163,13 @@ func invertUpper(dst, r []float64, c int) {
 // Jacobi rotations; a is overwritten. Small eigenvalues keep their digits
 // relative to the largest.
 func symmetricEigen(a []float64, n int, vec []float64) []float64 {
+	val := make([]float64, n)
+	eigenInto(val, a, n, vec)
+	return val
+}
+
+// eigenInto is symmetricEigen without allocation.
+func eigenInto(val, a []float64, n int, vec []float64) {
 	if vec != nil {
 		for i := range vec[:n*n] {
 			vec[i] = 0
@@ -188,7 +195,6 @@ func symmetricEigen(a []float64, n int, vec []float64) []float64 {
 			}
 		}
 	}
-	val := make([]float64, n)
 	for i := range val {
 		val[i] = a[i*n+i]
 	}
@@ -206,7 +212,6 @@ func symmetricEigen(a []float64, n int, vec []float64) []float64 {
 			}
 		}
 	}
-	return val
 }
 
 // rotate annihilates a[p][q] of a full symmetric matrix.

@@ -3,6 +3,9 @@ package fit
 import (
 	"math"
 	"slices"
+
+	"gonum.org/v1/gonum/blas"
+	"gonum.org/v1/gonum/blas/blas64"
 )
 
 // reduced is a set after weighting: the m x m Gram matrix of the weighted
@@ -108,29 +111,14 @@ func (d *reduced) variance(i int, u float64) {
 	d.w0[i] = 1 / math.Sqrt(d.d[i])
 }
 
-// product fills the Gram matrix. Two rows against two keep four sums in
-// registers, which halves the loads.
+// product fills the Gram matrix.
 func (d *reduced) product() {
 	m, w := d.m, d.w
-	for i := 0; i < m; i += 2 {
-		a := d.y[i*w : (i+1)*w]
-		if i+1 == m {
-			for k := 0; k <= i; k++ {
-				s := dot(a, d.y[k*w:(k+1)*w])
-				d.gram[i*m+k], d.gram[k*m+i] = s, s
-			}
-			break
-		}
-		b := d.y[(i+1)*w : (i+2)*w]
-		for k := 0; k <= i; k += 2 {
-			c, e := d.y[k*w:(k+1)*w], d.y[(k+1)*w:(k+2)*w]
-			ac, ae, bc, be := dot4(a, b, c, e)
-			d.gram[i*m+k], d.gram[k*m+i] = ac, ac
-			d.gram[(i+1)*m+k], d.gram[k*m+i+1] = bc, bc
-			d.gram[(i+1)*m+k+1], d.gram[(k+1)*m+i+1] = be, be
-			if k < i {
-				d.gram[i*m+k+1], d.gram[(k+1)*m+i] = ae, ae
-			}
+	blas64.Syrk(blas.NoTrans, 1, blas64.General{Rows: m, Cols: w, Stride: w, Data: d.y}, 0,
+		blas64.Symmetric{N: m, Stride: m, Data: d.gram, Uplo: blas.Lower})
+	for i := 0; i < m; i++ {
+		for k := 0; k < i; k++ {
+			d.gram[k*m+i] = d.gram[i*m+k]
 		}
 	}
 	d.sums()
@@ -154,20 +142,6 @@ func dot(a, b []float64) float64 {
 		s += x * b[j]
 	}
 	return s
-}
-
-// dot4 returns a.c, a.e, b.c, b.e.
-func dot4(a, b, c, e []float64) (ac, ae, bc, be float64) {
-	n := len(a)
-	b, c, e = b[:n], c[:n], e[:n]
-	for j, x := range a {
-		y, u, v := b[j], c[j], e[j]
-		ac += x * u
-		ae += x * v
-		bc += y * u
-		be += y * v
-	}
-	return ac, ae, bc, be
 }
 
 // scale divides all by a noise that has only now become known.

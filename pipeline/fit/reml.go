@@ -82,7 +82,7 @@ func linearise(sets []Problem, sigma, amount float64) ([]*Solver, error) {
 			continue
 		}
 		s.c.plain(&p)
-		found := s.locate(&p, Options{}, nil, true)
+		found, _ := s.locate(&p, Options{}, nil, true)
 		r := &Result{}
 		if s.own(found, Options{}, r) != Converged {
 			continue

@@ -26,44 +26,126 @@ func (s *Solver) starts(p *Problem) []candidate {
 	if p.Start != nil {
 		var x candidate
 		copy(x.p[:], p.Start)
-		return []candidate{x}
+		s.list = append(s.list[:0], x)
+		return s.list
 	}
 	lo, hi := slices.Min(p.PH)-1, slices.Max(p.PH)+1
 	step := [...]float64{0.25, 0.5, 0.8, 1.1}[c.n-1]
 	k := int(math.Ceil((hi-lo)/step)) + 1
-	k = min(k, [...]int{80, 40, 16, 12}[c.n-1])
-	grid := make([]float64, k)
-	for i := range grid {
-		grid[i] = lo + (hi-lo)*float64(i)/float64(k-1)
+	k = max(min(k, [...]int{80, 40, 16, 12}[c.n-1]), c.n+1)
+	grid := lo
+	width := (hi - lo) / float64(k-1)
+	if !c.fixed {
+		s.scan.prepare(c, grid, width, k)
 	}
-	var all []candidate
+	s.all = s.all[:0]
 	var idx [maxSteps]int
-	var visit func(level, from int)
-	visit = func(level, from int) {
-		if level == c.n {
-			var x candidate
-			for j := 0; j < c.n; j++ {
-				x.p[j] = grid[idx[j]]
-			}
-			all = append(all, s.try(x))
-			return
+	s.visit(&idx, 0, 0, k, grid, width)
+	slices.SortFunc(s.all, byRSS)
+	return apart(s.list[:0], s.all, c.n, 1.5*width, 3)
+}
+
+// byRSS orders candidates, best first.
+func byRSS(a, b candidate) int {
+	switch {
+	case a.rss < b.rss:
+		return -1
+	case a.rss > b.rss:
+		return 1
+	}
+	return 0
+}
+
+// visit tries all ascending choices of n values out of the grid of k.
+func (s *Solver) visit(idx *[maxSteps]int, level, from, k int, lo, width float64) {
+	c := &s.c
+	if level == c.n {
+		var x candidate
+		for j := 0; j < c.n; j++ {
+			x.p[j] = lo + width*float64(idx[j])
 		}
-		for i := from; i < k; i++ {
-			idx[level] = i
-			visit(level+1, i+1)
+		if c.fixed {
+			x = s.try(x)
+		} else {
+			x.rss = s.scan.rss(c, idx[:c.n])
+		}
+		s.all = append(s.all, x)
+		return
+	}
+	for i := from; i < k; i++ {
+		idx[level] = i
+		s.visit(idx, level+1, i+1, k, lo, width)
+	}
+}
+
+// A scan ranks starts: powers of ten of (pH - grid) are tabulated, and of the
+// data only the strongest signals take part, so that a try costs no exponential
+// and no m x m product.
+type scan struct {
+	m, n1, d int
+	power    []float64 // k*m: 10^(pH_i - grid_k)
+	z        []float64 // m*d: strongest signals
+	work     []float64 // eigenvalues, vectors and copy
+	b, q, r  []float64
+}
+
+func (t *scan) prepare(c *core, lo, width float64, k int) {
+	m := c.m
+	t.m, t.n1 = m, c.n1
+	t.d = min(c.n1+1, m)
+	t.power, t.z = grow(t.power, k*m), grow(t.z, m*t.d)
+	t.work = grow(t.work, m+2*m*m)
+	t.b, t.q, t.r = grow(t.b, m*c.n1), grow(t.q, m*c.n1), grow(t.r, c.n1*c.n1)
+	for g := range k {
+		for i := range m {
+			t.power[g*m+i] = math.Exp(ln10 * math.Min(math.Max(c.ph[i]-lo-width*float64(g), -70), 70))
 		}
 	}
-	visit(0, 0)
-	slices.SortFunc(all, func(a, b candidate) int {
-		switch {
-		case a.rss < b.rss:
-			return -1
-		case a.rss > b.rss:
-			return 1
+	val, vec, gram := t.work[:m], t.work[m:m+m*m], t.work[m+m*m:]
+	copy(gram, c.gram)
+	eigenInto(val, gram, m, vec)
+	for j := range t.d {
+		s := math.Sqrt(math.Max(val[j], 0))
+		for i := range m {
+			t.z[i*t.d+j] = s * vec[i*m+j]
 		}
-		return 0
-	})
-	return apart(all, c.n, 1.5*step, 3)
+	}
+}
+
+// rss is the part of the signals that the forms at these grid points leave.
+func (t *scan) rss(c *core, idx []int) float64 {
+	m, n1, d := t.m, t.n1, t.d
+	for i := range m {
+		var x [maxSteps + 1]float64
+		x[0] = 1
+		sum := 1.0
+		for j, g := range idx {
+			x[j+1] = x[j] * t.power[g*m+i]
+			sum += x[j+1]
+		}
+		f := c.rung[i] / sum
+		for j, v := range x[:n1] {
+			t.b[i*n1+j] = v * f
+		}
+	}
+	orthonormalise(t.q, t.r, t.b, m, n1)
+	left := 0.0
+	for _, v := range t.z[:m*d] {
+		left += v * v
+	}
+	for j := range n1 {
+		var s [maxSteps + 2]float64
+		for i := range m {
+			q := t.q[i*n1+j]
+			for l, v := range t.z[i*d : i*d+d] {
+				s[l] += q * v
+			}
+		}
+		for _, v := range s[:d] {
+			left -= v * v
+		}
+	}
+	return left
 }
 
 // try evaluates the plain sum of squares at x.
@@ -89,9 +171,8 @@ func (s *Solver) try(x candidate) candidate {
 	return x
 }
 
-// apart keeps up to most candidates that differ by more than gap somewhere.
-func apart(all []candidate, n int, gap float64, most int) []candidate {
-	var out []candidate
+// apart appends to out up to most candidates that differ by more than gap somewhere.
+func apart(out, all []candidate, n int, gap float64, most int) []candidate {
 	for _, x := range all {
 		near := false
 		for _, y := range out {
@@ -113,17 +194,24 @@ func apart(all []candidate, n int, gap float64, most int) []candidate {
 
 // locate finds the plain solution (no nuisance) from the best starts and leaves
 // it in c.now and in s.one. It returns the distinct minima, best first.
-func (s *Solver) locate(p *Problem, opt Options, r *Result, rough bool) []candidate {
+func (s *Solver) locate(p *Problem, opt Options, r *Result, rough bool) ([]candidate, Status) {
 	c := &s.c
 	list := s.starts(p)
-	var found []candidate
-	c.rough = rough
+	found := s.all[:0]
+	status := NotRun
+	best := math.Inf(1)
 	for _, x := range list {
-		s.try(x)
+		copy(c.now.p, x.p[:c.n])
+		if c.fixed {
+			s.try(x)
+		}
 		st, it := c.descend(opt.limit())
 		if r != nil {
 			r.Iterations += it
 			r.Starts++
+		}
+		if c.now.rss < best && st != Unusable {
+			best, status = c.now.rss, st
 		}
 		if st == Unusable {
 			continue
@@ -132,34 +220,31 @@ func (s *Solver) locate(p *Problem, opt Options, r *Result, rough bool) []candid
 		copy(y.p[:], c.now.p[:c.n])
 		found = append(found, y)
 	}
-	slices.SortStableFunc(found, func(a, b candidate) int {
-		switch {
-		case a.rss < b.rss:
-			return -1
-		case a.rss > b.rss:
-			return 1
-		}
-		return 0
-	})
+	slices.SortStableFunc(found, byRSS)
 	if len(found) == 0 {
-		found = list[:1]
+		found = append(found, list[0])
 	}
 	c.rough = false
-	found = apart(found, c.n, 0.02, 3)
-	if len(list) > 1 {
+	several := len(list) > 1
+	found = apart(s.list[:0], found, c.n, 0.02, 3)
+	if several {
 		c.now.zero()
 		s.try(found[0])
 	}
 	s.remember()
-	return found
+	return found, status
 }
 
 // search makes both estimates and, unless bare, what describes them.
 func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	c := &s.c
 	c.plain(p)
-	found := s.locate(p, opt, r, true)
-	r.Status = s.own(found, opt, r)
+	free := c.nuisance()
+	found, status := s.locate(p, opt, r, free)
+	r.Status = status
+	if free {
+		r.Status = s.own(found, opt, r)
+	}
 	if c.now.rss <= 1e-12*c.total && !c.fixed {
 		// The residual is a small difference of large traces: take the full matrix.
 		c.full, r.FullMatrix = true, true
@@ -253,13 +338,8 @@ func (e *Estimate) copyFrom(x *Estimate) {
 func (s *Solver) own(found []candidate, opt Options, r *Result) Status {
 	c := &s.c
 	status, best := NotRun, math.Inf(1)
-	free := c.nuisance()
-	for i, x := range found {
-		if i > 0 && !free {
-			break
-		}
+	for _, x := range found {
 		c.equip(nil)
-		c.frozen = !free
 		c.now.zero()
 		s.try(x)
 		st, it := c.descend(opt.limit())
@@ -269,7 +349,7 @@ func (s *Solver) own(found []candidate, opt Options, r *Result) Status {
 			s.remember()
 		}
 	}
-	if len(found) > 1 && free {
+	if len(found) > 1 {
 		c.now.zero()
 		s.restart()
 		c.evaluate(&c.now, true)

@@ -19,8 +19,10 @@ type Solver struct {
 	c    core
 	inf  influence
 	sig  []float64
-	one  params // the plain solution
-	keep frame
+	one  params // the solution to come back to
+	scan scan
+	list []candidate // starts, then distinct minima
+	all  []candidate
 }
 
 // Solve fits one set. The error is not nil only when p cannot be fitted at all
