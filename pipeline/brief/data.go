@@ -72,11 +72,20 @@ type Set struct {
 	WavelengthNM                          []float64   // thinned grid of the family
 	Family                                [][]float64 // one spectrum per rung, absorbance
 	Accused                               string      // rung in contrast, "" none
+	FamilyKeys                            []string    // rung key of each spectrum of Family; empty: in the order of Rungs
 	Acid, Base                            []float64   // limit spectra on the same grid
 	AcidSD, BaseSD                        []float64
+	Between                               []Form  // spectra of the forms between acid and base, for two steps and more
+	SigmaPH                               float64 // standard deviation expected of a latent pH residual; 0 or NaN unknown
 	IsosbesticNM                          float64 // NaN none
 	Budget                                []Component
 	InQuestionWhy                         string
+}
+
+// A Form is the spectrum of one form on the grid of its set.
+type Form struct {
+	Name      string
+	Value, SD []float64
 }
 
 // A Constant is one pKa.
@@ -120,7 +129,9 @@ type Case struct {
 	Results                   []Touched
 	Opened                    time.Time
 	Acknowledged              string
-	Answer                    string // command line
+	Answer                    string  // command line
+	CannotTell                string  // what cannot be told apart, a sentence; "": Alike is listed
+	Charts                    []Chart // of the characteristics that speak, with limits and onset interval
 }
 
 // A Candidate is one possible cause.
@@ -137,6 +148,8 @@ type Touched struct {
 	PKa           float64
 	Impact, Bound float64
 	Resolution    string
+	Verdict       string // "" unknown
+	Released      bool
 }
 
 // A Chart is one control chart.

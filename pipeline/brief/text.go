@@ -6,7 +6,10 @@ import (
 )
 
 // Headline is the night in one sentence.
-func (d *Data) Headline() string {
+func (d *Data) Headline() string { return "night " + d.Night + ": " + d.summary() }
+
+// summary is the headline without its night.
+func (d *Data) summary() string {
 	control := "in control"
 	switch {
 	case !d.InControl.Known:
@@ -14,9 +17,12 @@ func (d *Data) Headline() string {
 	case !d.InControl.Yes:
 		control = "not in control"
 	}
-	s := fmt.Sprintf("night %s: %d can go, %d to look at first, %d did not happen; the measuring system is %s", d.Night, len(d.Go), len(d.Look), len(d.Waiting), control)
-	if n := len(d.NotSeen) - len(d.Waiting); n > 0 {
-		s += fmt.Sprintf("; %d thing(s) not seen", n)
+	s := fmt.Sprintf("%d can go, %d to look at first, %d did not happen; the measuring system is %s", len(d.Go), len(d.Look), len(d.Waiting), control)
+	switch n := len(d.NotSeen) - len(d.Waiting); {
+	case n == 1:
+		s += "; one more thing was not seen"
+	case n > 1:
+		s += fmt.Sprintf("; %d more things were not seen", n)
 	}
 	return s
 }

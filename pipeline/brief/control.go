@@ -1,0 +1,354 @@
+package brief
+
+import (
+	"fmt"
+	"math"
+	"time"
+)
+
+// nightPlaces puts nights on an axis of days, or in their order where one is
+// not a date.
+func nightPlaces(nights []string) (at []float64, dates bool) {
+	at = make([]float64, len(nights))
+	for i, n := range nights {
+		t, err := time.Parse(time.DateOnly, n)
+		if err != nil {
+			for j := range at {
+				at[j] = float64(j)
+			}
+			return at, false
+		}
+		at[i] = float64(daysOf(t))
+	}
+	return at, true
+}
+
+// flagLetters gives every different flag of a chart a letter, in order.
+func flagLetters(c *Chart) (letter map[string]string, order []string) {
+	letter = map[string]string{}
+	for i := range min(len(c.Flags), len(c.Nights)) {
+		s := c.Flags[i]
+		if s == "" || letter[s] != "" {
+			continue
+		}
+		order = append(order, s)
+		if n := len(order); n <= 26 {
+			letter[s] = string(rune('a' + n - 1))
+		} else {
+			letter[s] = fmt.Sprint(n)
+		}
+	}
+	return letter, order
+}
+
+// A flagged is one line of the key below a control chart.
+type flagged struct{ Letter, Words, Nights string }
+
+// flagKey lists the flags of a chart with their letters and nights.
+func flagKey(c *Chart) []flagged {
+	letter, order := flagLetters(c)
+	var out []flagged
+	for _, s := range order {
+		first, last, n := "", "", 0
+		for i := range min(len(c.Flags), len(c.Nights)) {
+			if c.Flags[i] == s {
+				if n == 0 {
+					first = c.Nights[i]
+				}
+				last, n = c.Nights[i], n+1
+			}
+		}
+		when := first
+		if n == 2 {
+			when += ", " + last
+		} else if n > 2 {
+			when += fmt.Sprintf(" to %s, %d nights", last, n)
+		}
+		out = append(out, flagged{letter[s], s, when})
+	}
+	return out
+}
+
+// controlRange is the vertical range: limits and values, a value far outside
+// not pressing the rest flat.
+func controlRange(c *Chart) span {
+	y := nothing()
+	y.take(c.Low, c.High, c.Centre)
+	base := y
+	y.take(c.Values...)
+	y.take(c.EWMA...)
+	if w := base.hi - base.lo; !base.empty() && w > 0 && known(w) {
+		y.lo, y.hi = math.Max(y.lo, base.lo-3*w), math.Min(y.hi, base.hi+3*w)
+	}
+	if known(c.Assigned) && !y.empty() {
+		// An assigned value far away is said below the picture, not drawn.
+		if w := y.hi - y.lo; c.Assigned > y.lo-w && c.Assigned < y.hi+w {
+			y.take(c.Assigned)
+		}
+	}
+	return y.widened(0.08)
+}
+
+// controlPicture draws a control chart: nightly values, weighted mean, centre,
+// the space beyond the action limits, flagged nights, and the interval in which
+// a case began. It is "" without a night.
+func controlPicture(id string, c *Chart) string {
+	at, dates := nightPlaces(c.Nights)
+	if len(at) == 0 {
+		return ""
+	}
+	x := nothing()
+	x.take(at...)
+	p := draw(id, "Control chart, "+c.Title, controlWords(c), 360, 222)
+	f := newFrame(p, span{x.lo - 0.7, x.hi + 0.7}, controlRange(c))
+	f.beyond(c.Low, c.High)
+	f.onset(c, at, dates)
+	f.rule(unitName(c.Unit))
+	f.nightFoot(c, x, dates)
+	f.level("centre", c.Centre)
+	f.level("limit", c.Low)
+	f.level("limit", c.High)
+	f.level("assigned", c.Assigned)
+	f.curve("c mean", f.points(at, f.inside(c.EWMA)))
+	f.nightMarks(c, at)
+	return p.svg()
+}
+
+func unitName(unit string) string {
+	if unit == "" || unit == "1" {
+		return "value"
+	}
+	return unit
+}
+
+// controlWords describes a chart for people who hear it.
+func controlWords(c *Chart) string {
+	n := 0
+	last := math.NaN()
+	for _, v := range c.Values {
+		if known(v) {
+			n, last = n+1, v
+		}
+	}
+	s := fmt.Sprintf("%d nights from %s to %s, %d with a value", len(c.Nights), c.Nights[0], c.Nights[len(c.Nights)-1], n)
+	if known(last) {
+		s += ", the last " + general(last)
+	}
+	if known(c.Centre) {
+		s += "; centre " + general(c.Centre)
+	}
+	if known(c.Low) && known(c.High) {
+		s += "; action limits " + general(c.Low) + " and " + general(c.High)
+	}
+	if k := flagKey(c); len(k) > 0 {
+		s += fmt.Sprintf("; %d kinds of flag, listed below", len(k))
+	}
+	if c.OnsetLow != "" {
+		s += "; onset between " + c.OnsetLow + " and " + c.OnsetHigh
+	}
+	return s + "."
+}
+
+// general writes a number to five significant digits.
+func general(v float64) string {
+	if !known(v) {
+		return "\u2013"
+	}
+	if v == 0 {
+		return "0"
+	}
+	e := int(math.Floor(math.Log10(math.Abs(v))))
+	if e < -6 || e > 7 {
+		return minus(fmt.Sprintf("%.4e", v))
+	}
+	return fixed(v, min(max(4-e, 0), 8))
+}
+
+// level draws a straight line across, if it is in the field.
+func (f *frame) level(class string, v float64) {
+	if known(v) && v >= f.y0 && v <= f.y1 {
+		f.line(class, f.left, f.py(v), f.right, f.py(v))
+	}
+}
+
+// beyond hatches what lies outside the action limits.
+func (f *frame) beyond(low, high float64) {
+	if known(high) && high < f.y1 {
+		f.rect("beyond", f.left, f.top, f.right-f.left, f.py(math.Max(high, f.y0))-f.top)
+	}
+	if known(low) && low > f.y0 {
+		y := f.py(math.Min(low, f.y1))
+		f.rect("beyond", f.left, y, f.right-f.left, f.bottom-y)
+	}
+}
+
+// onset shades the interval in which a case began.
+func (f *frame) onset(c *Chart, at []float64, dates bool) {
+	if c.OnsetLow == "" {
+		return
+	}
+	low, high := f.night(c, c.OnsetLow, at, dates), f.night(c, c.OnsetHigh, at, dates)
+	if !known(low) || !known(high) {
+		return
+	}
+	a := math.Max(f.left, f.px(math.Min(low, high)-0.5))
+	b := math.Min(f.right, f.px(math.Max(low, high)+0.5))
+	if b <= a {
+		return
+	}
+	f.rect("onset", a, f.top, b-a, f.bottom-f.top)
+	f.line("began", a, f.top, b, f.top)
+	f.line("began", a, f.top, a, f.top+6)
+	f.line("began", b, f.top, b, f.top+6)
+	f.tag("note halo", b-4, f.top+10, "began")
+}
+
+func (f *frame) night(c *Chart, night string, at []float64, dates bool) float64 {
+	if dates {
+		if t, err := time.Parse(time.DateOnly, night); err == nil {
+			return float64(daysOf(t))
+		}
+		return math.NaN()
+	}
+	for i, n := range c.Nights {
+		if n == night {
+			return at[i]
+		}
+	}
+	return math.NaN()
+}
+
+func (f *frame) nightFoot(c *Chart, x span, dates bool) {
+	first, last := c.Nights[0], c.Nights[len(c.Nights)-1]
+	if !dates {
+		f.foot("nights "+short(first, 16)+" to "+short(last, 16), nil)
+		return
+	}
+	name := "night " + first
+	if first != last {
+		name = "nights " + first + " to " + last
+	}
+	f.foot(name, dayTicks(x.lo, x.hi, 6))
+}
+
+// inside makes what is outside the field a gap, so that no line leaves it.
+func (f *frame) inside(v []float64) []float64 {
+	out := make([]float64, len(v))
+	for i, y := range v {
+		out[i] = y
+		if !(y >= f.y0 && y <= f.y1) {
+			out[i] = math.NaN()
+		}
+	}
+	return out
+}
+
+// nightMarks draws the values: rings, flagged ones full diamonds with their
+// letter, those outside the field arrows at its edge.
+func (f *frame) nightMarks(c *Chart, at []float64) {
+	letter, _ := flagLetters(c)
+	r := math.Max(1.8, math.Min(3.4, (f.right-f.left)/float64(len(at))/2.2))
+	lettered, before := math.Inf(-1), ""
+	for i, v := range c.Values[:min(len(c.Values), len(at))] {
+		flag := ""
+		if i < len(c.Flags) {
+			flag = c.Flags[i]
+		}
+		if !known(v) {
+			if flag != "" {
+				f.text("flag", "middle", f.px(at[i]), f.bottom-4, letter[flag])
+			}
+			continue
+		}
+		q := f.at(at[i], v)
+		shape, class := rune(dot), "mark"
+		if flag != "" {
+			shape, class, q.y = diamond, "mark bad full", f.clamp(q.y)
+		}
+		switch {
+		case v > f.y1:
+			shape, q.y = upward, f.top+5
+		case v < f.y0:
+			shape, q.y = down, f.bottom-5
+		}
+		if flag != "" {
+			f.mark(shape, class, q.x, q.y, r+1.2)
+		} else {
+			f.mark(shape, class, q.x, q.y, r)
+		}
+		// One letter for a row of nights with the same flag, where they are too close for one each.
+		if flag != "" && (q.x-lettered >= 11 || flag != before && q.x-lettered >= 7) {
+			y := q.y - r - 5
+			if y < f.top+8 {
+				y = q.y + r + 12
+			}
+			f.text("flag", "middle", q.x, y, letter[flag])
+			lettered, before = q.x, flag
+		}
+	}
+}
+
+func (f *frame) clamp(y float64) float64 { return math.Max(f.top, math.Min(f.bottom, y)) }
+
+// referencePicture draws the deviations of tonight's references from their
+// centre, or from the assigned value where there is no centre.
+func referencePicture(id string, list []Reference) string {
+	type row struct {
+		name   string
+		d, u   float64
+		centre bool
+		bad    bool
+	}
+	var rows []row
+	x := nothing()
+	x.take(0)
+	for _, r := range list {
+		d, c := r.PKa-r.Centre, true
+		if !known(d) {
+			d, c = r.PKa-r.Assigned, false
+		}
+		if !known(d) {
+			continue
+		}
+		u := 0.0
+		if known(r.U) && r.U > 0 {
+			u = r.U
+		}
+		x.take(d-u, d+u)
+		rows = append(rows, row{r.label(), d, u, c, !good(r.Verdict)})
+	}
+	if len(rows) == 0 {
+		return ""
+	}
+	about := "Deviation of each reference, with its expanded uncertainty:"
+	for i, r := range rows {
+		if i > 0 {
+			about += ","
+		}
+		about += " " + r.name + " " + signed(r.d, 3)
+	}
+	const step = 34
+	p := draw(id, "References of the night", about+".", 360, float64(len(rows))*step+46)
+	f := newFrame(p, x.widened(0.1), span{0, 1})
+	f.left, f.top = 12, 4
+	f.foot("measured − expected pKa, bar = U", ticks(f.x0, f.x1, 6))
+	for _, t := range ticks(f.x0, f.x1, 6) {
+		f.line("grid", f.px(t.at), f.top, f.px(t.at), f.bottom)
+	}
+	f.line("zero", f.px(0), f.top, f.px(0), f.bottom)
+	for i, r := range rows {
+		y := f.top + float64(i)*step
+		against := "centre"
+		if !r.centre {
+			against = "assigned value"
+		}
+		f.text("note halo", "start", f.left, y+11, short(r.name, 34)+", from "+against)
+		f.line("spread", f.px(r.d-r.u), y+22, f.px(r.d+r.u), y+22)
+		shape, class := rune(dot), "mark full"
+		if r.bad {
+			shape, class = diamond, "mark bad full"
+		}
+		f.mark(shape, class, f.px(r.d), y+22, 4.2)
+	}
+	return p.svg()
+}
