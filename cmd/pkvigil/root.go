@@ -118,7 +118,7 @@ strong acids and bases, solvents and UV lamps asks for the usual protection.`,
 		c.GroupID = "run"
 		root.AddCommand(c)
 	}
-	for _, c := range []*cobra.Command{a.why(), a.trace(), a.since(), a.reach(), a.brief(), a.probe()} {
+	for _, c := range []*cobra.Command{a.why(), a.trace(), a.since(), a.reach(), a.brief(), a.probe(), a.look()} {
 		c.GroupID = "ask"
 		root.AddCommand(c)
 	}
