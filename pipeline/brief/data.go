@@ -46,6 +46,7 @@ type Control struct {
 // A Reference is one reference set of the night.
 type Reference struct {
 	Key, Title, Slot, Verdict string
+	Instrument                string  // "" left out of the name of the row
 	PKa, U, Assigned, Centre  float64 // NaN unknown
 	Sentence                  string
 }

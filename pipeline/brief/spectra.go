@@ -143,7 +143,7 @@ func highest(pts []point) (point, bool) {
 }
 
 // isosbestic marks the point where the spectra cross: a ring at the median
-// absorbance there and a line down to the axis.
+// absorbance there, a line up from it and its wavelength.
 func (f *frame) isosbestic(nm float64, x []float64, list []spectrum) {
 	if !known(nm) || nm < f.x0 || nm > f.x1 || nm <= 0 {
 		return
@@ -159,9 +159,9 @@ func (f *frame) isosbestic(nm float64, x []float64, list []spectrum) {
 	}
 	slices.Sort(there)
 	q := f.at(nm, there[len(there)/2])
-	f.line("iso", q.x, q.y+5, q.x, f.bottom)
+	f.line("iso", q.x, f.top+24, q.x, q.y-5)
 	f.mark(dot, "ring", q.x, q.y, 5)
-	f.tag("note", q.x+1, f.bottom-6, "isosbestic "+fixed(nm, 1)+" nm")
+	f.tag("note halo", q.x-4, f.top+28, "isosbestic "+fixed(nm, 1)+" nm")
 }
 
 // between interpolates a curve on an ascending or descending grid.

@@ -291,20 +291,20 @@ func strips(d *Data) []strip {
 	return out
 }
 
-// label names a reference.
-func (r Reference) label() string {
+// Label names a reference in one line.
+func (r Reference) Label() string {
 	s := r.Title
 	if s == "" {
 		s = r.Key
+	}
+	if r.Instrument != "" {
+		s = r.Instrument + ", " + s
 	}
 	if r.Slot != "" {
 		s += ", " + r.Slot
 	}
 	return s
 }
-
-// Label names a reference for the page.
-func (r Reference) Label() string { return r.label() }
 
 // percent writes a probability.
 func percent(p float64) string {
