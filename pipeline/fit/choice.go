@@ -58,7 +58,7 @@ func ModelChoice(p Problem, maxSteps int) (*Choice, error) {
 		if n == p.Steps {
 			q.Start = p.Start
 		}
-		r, err := s.Solve(q, Options{})
+		r, err := s.Solve(q, Options{MaxIterations: 100})
 		if err != nil {
 			return nil, err
 		}
@@ -173,7 +173,7 @@ func (s *Solver) criterionGain(p *Problem, before, after []float64) float64 {
 	n, m := p.Steps, len(p.PH)
 	dims := min(n+1, p.columns())
 	var red reduced
-	red.compress(&s.red, dims, n, s.red.effective(Options{}))
+	red.compress(&s.red, dims, n, s.red.effective(p.Effective))
 	signals := dims
 	if red.base {
 		signals++

@@ -209,6 +209,16 @@ func (c *ratioAt) solve(shared []Shared) (*ClassicalResult, bool) {
 	}
 	r := &ClassicalResult{WavelengthNM: p.WavelengthNM[c.l], Index: c.l, PKa: pka, Uncorrected: raw,
 		Acid: c.acid, Base: c.base, Between: c.between, EachPKa: slices.Clone(each), Gain: make([]float64, m)}
+	if !c.uncertainty(r, a, ph, weight, shared, sd) {
+		return nil, false
+	}
+	return r, true
+}
+
+// uncertainty fills gains and uncertainties of r.
+func (c *ratioAt) uncertainty(r *ClassicalResult, a, ph, weight []float64, shared []Shared, sd func(int) float64) bool {
+	p := c.p
+	each := make([]float64, len(c.between))
 	v := 0.0
 	slope := func(x []float64, i int, h float64) (float64, bool) {
 		keep := x[i]
@@ -219,12 +229,12 @@ func (c *ratioAt) solve(shared []Shared) (*ClassicalResult, bool) {
 		x[i] = keep
 		return (up - down) / (2 * h), ok1 && ok2
 	}
-	for i := range m {
+	for i := range p.PH {
 		h := math.Min(1e-5, sd(i)/10)
 		da, ok1 := slope(a, i, math.Max(h, 1e-9))
 		dp, ok2 := slope(ph, i, 1e-5)
 		if !ok1 || !ok2 {
-			return nil, false
+			return false
 		}
 		r.Gain[i] = dp
 		v += sq2(da * sd(i))
@@ -237,7 +247,7 @@ func (c *ratioAt) solve(shared []Shared) (*ClassicalResult, bool) {
 		v += sq2(sh.coefficient(0, r.Gain) * sh.U)
 	}
 	r.U = math.Sqrt(v)
-	return r, true
+	return true
 }
 
 func sq2(x float64) float64 { return x * x }

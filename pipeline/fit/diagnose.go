@@ -166,10 +166,7 @@ func (c *core) components(opt Options, r *Result) {
 	if c.base {
 		cols--
 	}
-	eff := cols
-	if opt.Effective > 0 && opt.Effective < eff {
-		eff = opt.Effective
-	}
+	eff := c.effective(opt.Effective)
 	rank := min(m, int(cols))
 	if rank < 1 {
 		return

@@ -94,7 +94,7 @@ func (h *Hidden) decompose(two *Result, w int) {
 // Nadakuditi 2012, from memory), so below (m w)^(1/4) it shows nothing.
 func (h *Hidden) limit(red *reduced, p *Problem, r *Result, opt Options) {
 	m, w := red.m, red.w
-	eff := red.effective(opt)
+	eff := red.effective(p.effective(opt))
 	fm := float64(m)
 	rm, rw := math.Sqrt(fm), math.Sqrt(eff)
 	level := (rm+rw)*(rm+rw) + tracyWidom*(rm+rw)*math.Cbrt(1/rm+1/rw)

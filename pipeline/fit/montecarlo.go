@@ -167,7 +167,7 @@ func newTemplate(p *Problem, shared []Shared, r *Result) (*template, error) {
 			t.clean[i*c.q+c.q-1] /= c.w0[i]
 		}
 	}
-	t.free = c.w - c.q
+	t.free = int(c.effective(p.Effective)) - c.n1
 	return t, nil
 }
 

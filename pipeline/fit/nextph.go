@@ -110,32 +110,9 @@ func (c *core) imagine(mat []float64, n int, ph, count float64) {
 		d += v / float64(c.m)
 	}
 	w0 := 1 / math.Sqrt(d)
-	// Rows in the coordinates of the solution: shares times R^-1 are the design of
-	// the spectra, times L the model.
 	var design, design0 [maxSteps + 1]float64
-	point := func(row []float64, out []float64) {
-		var t, t0 [maxSteps + 1]float64
-		for j := 0; j < n1; j++ {
-			for k := 0; k < n1; k++ {
-				t[j] += row[k] * rung * f.ri[k*n1+j]
-				if c.base {
-					t0[j] += row[k] * rung * w0 * f.ri0[k*n1+j]
-				}
-			}
-		}
-		for j := 0; j < n1; j++ {
-			out[j] = 0
-			for k := j; k < n1; k++ {
-				out[j] += t[k] * f.l[k*n1+j]
-			}
-		}
-		if c.base {
-			out[q-1] = 0
-			for k := 0; k < n1; k++ {
-				out[q-1] += t0[k] * f.e0[k]
-			}
-		}
-		design, design0 = t, t0
+	point := func(row, out []float64) {
+		c.place(row, rung, w0, design[:n1], design0[:n1], out[:q])
 	}
 	var dt, dk [maxSteps + 2]float64
 	var dp [maxSteps][maxSteps + 2]float64
@@ -175,5 +152,30 @@ func (c *core) imagine(mat []float64, n int, ph, count float64) {
 		for j := 0; j <= i; j++ {
 			mat[i*n+j] += count * dot(x, cols[j*q:(j+1)*q])
 		}
+	}
+}
+
+// place maps a row of shares to the coordinates of the solution: times R^-1 it is
+// the design of the spectra, times L (or e0) the model.
+func (c *core) place(row []float64, rung, w0 float64, design, design0, out []float64) {
+	n1, f := c.n1, &c.now
+	clear(design)
+	clear(design0)
+	clear(out)
+	for j := 0; j < n1; j++ {
+		for k := 0; k < n1; k++ {
+			design[j] += row[k] * rung * f.ri[k*n1+j]
+			if c.base {
+				design0[j] += row[k] * rung * w0 * f.ri0[k*n1+j]
+			}
+		}
+	}
+	for j := 0; j < n1; j++ {
+		for k := j; k < n1; k++ {
+			out[j] += design[k] * f.l[k*n1+j]
+		}
+	}
+	if c.base {
+		out[c.q-1] = dot(design0, f.e0)
 	}
 }

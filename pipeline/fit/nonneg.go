@@ -3,6 +3,7 @@ package fit
 import (
 	"fmt"
 	"math"
+	"math/bits"
 )
 
 // constrained fits with spectra >= 0. For every trial each wavelength gets its
@@ -190,7 +191,7 @@ func (k *constrained) row(f *frame, i, u int, x []float64) bool {
 // normal fills the data part of the normal matrix (n3*n3, full symmetric) and
 // half the negative gradient including the priors.
 func (k *constrained) normal(f *frame, off, mat, grad []float64) {
-	m, nx, n3, n1 := k.m, k.nx, k.n3, k.n1
+	m, nx, n3 := k.m, k.nx, k.n3
 	clear(mat)
 	rows := make([]float64, n3*m*nx)
 	touch := make([]bool, n3*m)
@@ -203,65 +204,69 @@ func (k *constrained) normal(f *frame, off, mat, grad []float64) {
 			}
 		}
 	}
-	q, r := make([]float64, m*n1), make([]float64, n1*n1)
-	sub := make([]float64, m*n1)
 	proj := make([]float64, m*m)
-	t, z := make([]float64, m*nx), make([]float64, m*nx)
 	for face, psi := range k.groups {
-		cnt := 0
-		for j := 0; j < n1; j++ {
-			if face>>j&1 == 1 {
-				cnt++
-			}
-		}
-		for i := 0; i < m; i++ {
-			a := 0
-			for j := 0; j < n1; j++ {
-				if face>>j&1 == 1 {
-					sub[i*cnt+a] = f.bm[i*n1+j]
-					a++
-				}
-			}
-		}
-		orthonormalise(q, r, sub, m, cnt)
-		for i := 0; i < m; i++ {
-			for l := 0; l < m; l++ {
-				proj[i*m+l] = -dot(q[i*cnt:(i+1)*cnt], q[l*cnt:(l+1)*cnt])
-			}
-			proj[i*m+i]++
-		}
-		for u := 0; u < n3; u++ {
-			// t = (I-P) rows, z = t psi; then products with all other unknowns.
-			clear(t)
-			for l := 0; l < m; l++ {
-				if !touch[u*m+l] {
-					continue
-				}
-				for i := 0; i < m; i++ {
-					for a, x := range rows[(u*m+l)*nx : (u*m+l+1)*nx] {
-						t[i*nx+a] += proj[i*m+l] * x
-					}
-				}
-			}
-			for i := 0; i < m; i++ {
-				for a := 0; a < nx; a++ {
-					z[i*nx+a] = dot(t[i*nx:(i+1)*nx], psi[a*nx:(a+1)*nx])
-				}
-			}
-			for v := 0; v <= u; v++ {
-				s := 0.0
-				for i := 0; i < m; i++ {
-					if touch[v*m+i] {
-						s += dot(rows[(v*m+i)*nx:(v*m+i+1)*nx], z[i*nx:(i+1)*nx])
-					}
-				}
-				mat[u*n3+v] += s
-			}
-		}
+		k.projector(f, face, proj)
+		k.accumulate(mat, rows, touch, proj, psi)
 	}
 	for u := 0; u < n3; u++ {
 		for v := 0; v < u; v++ {
 			mat[v*n3+u] = mat[u*n3+v]
+		}
+	}
+}
+
+// projector fills I - P for the forms that are free in face.
+func (k *constrained) projector(f *frame, face uint8, proj []float64) {
+	m, n1 := k.m, k.n1
+	q, r, sub := make([]float64, m*n1), make([]float64, n1*n1), make([]float64, 0, m*n1)
+	cnt := bits.OnesCount8(face)
+	for i := 0; i < m; i++ {
+		for j := 0; j < n1; j++ {
+			if face>>j&1 == 1 {
+				sub = append(sub, f.bm[i*n1+j])
+			}
+		}
+	}
+	orthonormalise(q, r, sub, m, cnt)
+	for i := 0; i < m; i++ {
+		for l := 0; l < m; l++ {
+			proj[i*m+l] = -dot(q[i*cnt:(i+1)*cnt], q[l*cnt:(l+1)*cnt])
+		}
+		proj[i*m+i]++
+	}
+}
+
+// accumulate adds one group: for unknowns u, v the trace of
+// (I-P) rows_u psi rows_v'.
+func (k *constrained) accumulate(mat, rows []float64, touch []bool, proj, psi []float64) {
+	m, nx, n3 := k.m, k.nx, k.n3
+	t, z := make([]float64, m*nx), make([]float64, m*nx)
+	for u := 0; u < n3; u++ {
+		clear(t)
+		for l := 0; l < m; l++ {
+			if !touch[u*m+l] {
+				continue
+			}
+			for i := 0; i < m; i++ {
+				for a, x := range rows[(u*m+l)*nx : (u*m+l+1)*nx] {
+					t[i*nx+a] += proj[i*m+l] * x
+				}
+			}
+		}
+		for i := 0; i < m; i++ {
+			for a := 0; a < nx; a++ {
+				z[i*nx+a] = dot(t[i*nx:(i+1)*nx], psi[a*nx:(a+1)*nx])
+			}
+		}
+		for v := 0; v <= u; v++ {
+			s := 0.0
+			for i := 0; i < m; i++ {
+				if touch[v*m+i] {
+					s += dot(rows[(v*m+i)*nx:(v*m+i+1)*nx], z[i*nx:(i+1)*nx])
+				}
+			}
+			mat[u*n3+v] += s
 		}
 	}
 }

@@ -24,6 +24,7 @@ type Problem struct {
 	UAmount   float64   // relative standard deviation of the amount of dye between rungs; 0: amounts are fixed
 	UBaseline float64   // absorbance, prior standard deviation of one flat offset per rung; 0: no offset
 	Shared    []Shared  // errors common to rungs of this set and to other sets
+	Effective float64   // number of independent wavelengths when the instrument smooths; 0: all
 
 	// Library, when not nil, fixes the spectra of the n+1 forms up to the
 	// amount: (n+1)*w, row-major, acid form first.

@@ -32,13 +32,13 @@ func (d *reduced) compress(src *reduced, dims, known int, effective float64) {
 }
 
 // effective is the number of independent columns.
-func (d *reduced) effective(opt Options) float64 {
+func (d *reduced) effective(told float64) float64 {
 	e := float64(d.w)
 	if d.base {
 		e--
 	}
-	if opt.Effective > 0 {
-		e = math.Min(e, opt.Effective)
+	if told > 0 {
+		e = math.Min(e, told)
 	}
 	return e
 }

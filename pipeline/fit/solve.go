@@ -8,7 +8,7 @@ import (
 // Options say how to fit. The zero value is right for daily work.
 type Options struct {
 	MaxIterations int     // per descent; 0: 200
-	Effective     float64 // number of independent wavelengths when the instrument smooths; 0: all
+	Effective     float64 // when not 0, in place of Problem.Effective
 	Bare          bool    // only the two estimates with their covariances: no spectra, singular values, slope or leave-one-out
 }
 
@@ -42,6 +42,7 @@ func (s *Solver) Solve(p Problem, opt Options) (*Result, error) {
 // are long enough: a bare fit then allocates nothing.
 func (s *Solver) Refit(p *Problem, opt Options, r *Result) error {
 	r.reset(p)
+	opt.Effective = p.effective(opt)
 	if err := check(p); err != nil {
 		return err
 	}
@@ -59,6 +60,14 @@ func (s *Solver) Refit(p *Problem, opt Options, r *Result) error {
 		r.Notes = append(r.Notes, fmt.Sprintf("The fit ended as %v after %d iterations.", r.Status, r.Iterations))
 	}
 	return nil
+}
+
+// effective is the number of independent wavelengths to reckon with; 0: all.
+func (p *Problem) effective(opt Options) float64 {
+	if opt.Effective > 0 {
+		return opt.Effective
+	}
+	return p.Effective
 }
 
 // reset empties the result; it is unusable until the fit says otherwise.
@@ -90,7 +99,7 @@ func (s Status) String() string {
 
 // prepare weights and reduces the data and sizes the buffers.
 func (s *Solver) prepare(p *Problem, opt Options) error {
-	s.red.load(p, opt.Effective)
+	s.red.load(p, p.effective(opt))
 	c := &s.c
 	c.reduced = &s.red
 	c.n, c.n1, c.slope, c.full, c.fixed = p.Steps, p.Steps+1, false, false, p.Library != nil

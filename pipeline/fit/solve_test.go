@@ -1,7 +1,6 @@
 package fit
 
 import (
-	"fmt"
 	"math"
 	"math/rand/v2"
 	"testing"
@@ -20,7 +19,6 @@ func TestSolveNuisance(t *testing.T) {
 			if r.Status != Converged {
 				t.Errorf("n=%d seed %d: %v after %d iterations", n+1, seed, r.Status, r.Iterations)
 			}
-			fmt.Println(n+1, r.Status, r.Iterations, r.Starts, r.Own.PKa, r.Full.PKa, math.Sqrt(r.Own.Cov[0]), math.Sqrt(r.Full.Cov[0]), r.Own.Objective, r.Full.Objective, r.Condition)
 			for k := range pka {
 				s := math.Sqrt(r.Full.Cov[k*(n+2)])
 				if z := (r.Full.PKa[k] - pka[k]) / s; math.Abs(z) > 5 {

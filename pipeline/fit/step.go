@@ -69,7 +69,6 @@ func (c *core) assemble(f *frame, lambda float64) {
 	}
 	var e small
 	var res [maxSteps + 2]float64
-	var col [maxSteps + 2]float64
 	for i := 0; i < m; i++ {
 		c.eliminate(f, i, lambda, &e)
 		r := res[:q]
@@ -84,35 +83,7 @@ func (c *core) assemble(f *frame, lambda float64) {
 		for k := 0; k < ne; k++ {
 			rhs[k] += c.qrow(f, i, k/n1)[k%n1] * r[k/n1]
 		}
-		for k := 0; k < np+c.nb; k++ {
-			x := col[:q]
-			c.column(f, i, k, x)
-			row := mat[(ne+k)*n:]
-			for j := range x {
-				rhs[ne+k] += x[j] * r[j]
-			}
-			e.weigh(x)
-			for l := 0; l < q && ne > 0; l++ {
-				qr := c.qrow(f, i, l)
-				for g, y := range qr {
-					row[l*n1+g] += y * x[l]
-				}
-			}
-			for l := 0; l <= k; l++ {
-				s := 0.0
-				if l < np {
-					for j, y := range f.dp[(l*m+i)*q : (l*m+i)*q+q] {
-						s += x[j] * y
-					}
-				} else {
-					sh := c.shift[i*c.nb+l-np]
-					for j, y := range f.dt[i*q : i*q+q] {
-						s += x[j] * y * sh
-					}
-				}
-				row[ne+l] += s
-			}
-		}
+		c.columnsBlock(f, i, r, &e)
 	}
 	for k := 0; k < np; k++ {
 		j := ne + k
@@ -123,6 +94,44 @@ func (c *core) assemble(f *frame, lambda float64) {
 		j := ne + np + k
 		mat[j*n+j] += 1 + lambda
 		rhs[j] -= f.b[k]
+	}
+}
+
+// columnsBlock adds what rung i, with weighted residual r, tells about
+// constants and shared errors.
+func (c *core) columnsBlock(f *frame, i int, r []float64, e *small) {
+	m, n1, q, ne, np := c.m, c.n1, c.q, c.ne, c.np
+	n := ne + np + c.nb
+	mat, rhs := c.a.mat, c.a.rhs
+	var col [maxSteps + 2]float64
+	for k := 0; k < np+c.nb; k++ {
+		x := col[:q]
+		c.column(f, i, k, x)
+		row := mat[(ne+k)*n:]
+		for j := range x {
+			rhs[ne+k] += x[j] * r[j]
+		}
+		e.weigh(x)
+		for l := 0; l < q && ne > 0; l++ {
+			qr := c.qrow(f, i, l)
+			for g, y := range qr {
+				row[l*n1+g] += y * x[l]
+			}
+		}
+		for l := 0; l <= k; l++ {
+			s := 0.0
+			if l < np {
+				for j, y := range f.dp[(l*m+i)*q : (l*m+i)*q+q] {
+					s += x[j] * y
+				}
+			} else {
+				sh := c.shift[i*c.nb+l-np]
+				for j, y := range f.dt[i*q : i*q+q] {
+					s += x[j] * y * sh
+				}
+			}
+			row[ne+l] += s
+		}
 	}
 }
 
@@ -210,7 +219,7 @@ func (c *core) gradient(f *frame) float64 {
 // parameters to g and returns the predicted decrease of phi and the largest
 // move of a pKa; ok is false when the system is singular.
 func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
-	m, q, ne, np := c.m, c.q, c.ne, c.np
+	ne, np := c.ne, c.np
 	n := ne + np + c.nb
 	sol := c.a.sol
 	if c.frozen && ne > 0 && c.pair < 0 && c.pin < 0 {
@@ -248,6 +257,13 @@ func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
 		copy(g.k, f.k)
 		return pred, move, true
 	}
+	return pred + c.stepRungs(f, g, lambda, sol), move, true
+}
+
+// stepRungs moves readings and amounts rung by rung, given the move sol of the
+// rest, and returns their part of the predicted decrease.
+func (c *core) stepRungs(f, g *frame, lambda float64, sol []float64) (pred float64) {
+	m, q := c.m, c.q
 	var e small
 	var rr [maxSteps + 2]float64
 	for i := 0; i < m; i++ {
@@ -279,7 +295,7 @@ func (c *core) step(f, g *frame, lambda float64) (pred, move float64, ok bool) {
 		g.k[i] += dk
 		pred += da*(ga+lambda*da) + dk*(gk+lambda*dk)
 	}
-	return pred, move, true
+	return pred
 }
 
 // solvePlain solves for the constants alone when nothing else is uncertain: the
