@@ -136,7 +136,8 @@ type Decision struct {
 	Reason string
 }
 
-// Update moves the open cases on by one night. It is pure: the same input
+// Update moves the open cases on by one night. ev must come from a History that
+// follows the cases (History.Follow); without it nothing closes by itself. It is pure: the same input
 // gives the same output, and open is not changed. A night without data neither opens
 // nor closes a case. Cases closed in this night are returned with their
 // transition and need not be passed again; further evaluations should have their Masks.

@@ -33,7 +33,7 @@ func (m *Model) Evaluate(h History) (Evaluation, error) {
 // covariance. Those too small to matter do not count towards MaxCauses.
 func (l *look) passes(ev *Evaluation) (found []*ranked) {
 	counted := 0
-	for counted < l.m.rules.MaxCauses && len(found) < 2*l.m.rules.MaxCauses && len(l.extra)+2 <= maxExtra {
+	for counted < l.m.rules.MaxCauses && len(found) < 2*l.m.rules.MaxCauses && len(l.extra)+2 <= maxExtra && counted+len(found) < 2*maxCauses {
 		outs, top := l.scanAll(true)
 		if top < 0 {
 			break

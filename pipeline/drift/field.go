@@ -87,6 +87,7 @@ func (m *Model) newLook(h History) (*look, error) {
 		l.cells[i].settle()
 	}
 	l.findScopes()
+	l.usual()
 	return l, nil
 }
 

@@ -118,6 +118,18 @@ type Mask struct {
 	From, Until Night
 }
 
+// Follow adds to h what the cases of a laboratory mean for an evaluation: closed ones are
+// taken out of the observations, the others are watched.
+func (h *History) Follow(cases []Case) {
+	for _, c := range cases {
+		if c.State == Closed {
+			h.Masks = append(h.Masks, c.Masks()...)
+		} else if w, ok := c.Watch(); ok {
+			h.Watch = append(h.Watch, w)
+		}
+	}
+}
+
 // A History is what one evaluation looks at. Observations outside First..Last
 // are ignored.
 type History struct {
@@ -142,10 +154,14 @@ type Rules struct {
 	FalseAlarmNights float64 // one false case in so many nights; 365
 	Shrink           float64 // share by which correlations are shrunk to the diagonal; 0.1
 	EventFactor      float64 // prior odds of a cause whose event was logged within one night; 10
-	MaxCauses        int     // passes: 1 + second causes looked for; 3
-	Least            float64 // size in table units below which a disturbance is recorded and not rung; 0.2
-	SayAt            float64 // probability below which "cannot tell" is said; 0.8
-	Causes           []Cause // nil: all
+	// CalibrationPH is the sd in pH by which readings differ from one calibration
+	// to the next in control (0.3 mV in each buffer is about 0.005). A constant shift
+	// of that size since a calibration is then nothing new. 0: none
+	CalibrationPH float64
+	MaxCauses     int     // passes: 1 + second causes looked for; 3
+	Least         float64 // size in table units below which a disturbance is recorded and not rung; 0.2
+	SayAt         float64 // probability below which "cannot tell" is said; 0.8
+	Causes        []Cause // nil: all
 }
 
 // DefaultRules fills the zero fields of r.

@@ -285,3 +285,58 @@ func TestRenew(t *testing.T) {
 		t.Error("a changed design was not fitted")
 	}
 }
+
+// Readings that differ a little from calibration to calibration, on all
+// references together, are not news where the rules know of it; a real drift still is.
+func TestCalibrationsDiffer(t *testing.T) {
+	first, last := Night(20000), Night(20048)
+	l := buildLab(1, family()[:3], refNames[:3], 40, first, last)
+	const sd = 0.006
+	quiet := map[bool]int{}
+	found := 0
+	for _, known := range []bool{false, true} {
+		r := Rules{Threshold: 8}
+		if known {
+			r.CalibrationPH = sd
+		}
+		m, err := NewModel(l.cells, r, Plain)
+		if err != nil {
+			t.Fatal(err)
+		}
+		for s := range 12 {
+			rng := rand.New(rand.NewPCG(51, uint64(s)))
+			var shift float64
+			faults := []fault{{cause: ElectrodeOffset, res: Resource{KindElectrode, "E-31"}, theta: []float64{1}, from: first, to: last}}
+			by := map[Night]float64{}
+			for n := first; n <= last; n++ {
+				if int(n)%7 == 0 {
+					shift = sd / 0.02 * rng.NormFloat64()
+				}
+				by[n] = shift
+			}
+			faults[0].course = func(n Night) float64 { return by[n] }
+			h := l.draw(m, rng, first, last, 2, faults)
+			ev, err := m.Evaluate(h)
+			if err != nil {
+				t.Fatal(err)
+			}
+			if ev.Rings {
+				quiet[known]++
+			}
+			if known {
+				h = l.draw(m, rng, first, last, 2, append(faults, fault{cause: ElectrodeSlope, res: Resource{KindElectrode, "E-31"}, theta: []float64{0.35}, from: last - 6, to: last,
+					course: func(n Night) float64 { return float64(n - (last - 7)) }}))
+				if ev, err = m.Evaluate(h); err != nil {
+					t.Fatal(err)
+				}
+				if ev.Rings {
+					found++
+				}
+			}
+		}
+	}
+	t.Logf("calibrations that differ by %.3f rang in %d of 12 series, with the rule in %d; a real drift on top rang in %d", sd, quiet[false], quiet[true], found)
+	if quiet[true] > quiet[false]/2 || found < 10 {
+		t.Errorf("rang in %d, with the rule %d; drift found in %d", quiet[false], quiet[true], found)
+	}
+}

@@ -4,7 +4,12 @@ import (
 	"math"
 )
 
-const maxExtra = 8
+// maxExtra is how many disturbances the covariance can hold: those explained,
+// and the usual differences between calibrations.
+const (
+	maxExtra  = 64
+	maxCauses = 8
+)
 
 // sums are what a hypothesis has gathered over its nights: products with y,
 // with the explained disturbances, and with itself.
@@ -342,8 +347,10 @@ func (c *scanner) add(a *sums, e entry) {
 	for n := range c.columns {
 		j := col[n*k : (n+1)*k]
 		a.p[n] += dot(j, e.o.v)
-		for x := range c.extra {
-			a.e[x][n] += dot(j, e.o.z[x])
+		for x, z := range e.o.z {
+			if z != nil {
+				a.e[x][n] += dot(j, z)
+			}
 		}
 	}
 	for i, v := range p.q {

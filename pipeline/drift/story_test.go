@@ -121,17 +121,13 @@ func tellStory(t *testing.T, l *lab, m *Model, seed uint64, faults []fault, thre
 	all := l.draw(m, rng, first, nightZero+60, 1, faults)
 	all.Observations = l.calibrations(m, rng, all.Observations, faults)
 	var open []Case
-	var masks []Mask
+	var closed []Case
 	var out []told
 	id := int64(0)
 	for n := first; n <= nightZero+60; n++ {
 		h := all
-		h.Last, h.Masks = n, masks
-		for _, c := range open {
-			if w, ok := c.Watch(); ok {
-				h.Watch = append(h.Watch, w)
-			}
-		}
+		h.Last = n
+		h.Follow(append(slices.Clone(closed), open...))
 		ev, err := m.Evaluate(h)
 		if err != nil {
 			t.Fatal(err)
@@ -149,7 +145,7 @@ func tellStory(t *testing.T, l *lab, m *Model, seed uint64, faults []fault, thre
 		open = open[:0:0]
 		for _, c := range cases {
 			if c.State == Closed {
-				masks = append(masks, c.Masks()...)
+				closed = append(closed, c)
 			} else {
 				open = append(open, c)
 			}
