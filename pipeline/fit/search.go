@@ -16,7 +16,7 @@ func (o Options) limit() int {
 	if o.MaxIterations > 0 {
 		return o.MaxIterations
 	}
-	return 200
+	return 500
 }
 
 // starts lists starting values, best first, from a coarse grid of pKa over the

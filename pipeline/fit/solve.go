@@ -7,7 +7,7 @@ import (
 
 // Options say how to fit. The zero value is right for daily work.
 type Options struct {
-	MaxIterations int     // per descent; 0: 200
+	MaxIterations int     // per descent; 0: 500
 	Effective     float64 // when not 0, in place of Problem.Effective
 	Bare          bool    // only the two estimates with their covariances: no spectra, singular values, slope or leave-one-out
 }
