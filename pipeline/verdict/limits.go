@@ -1,7 +1,5 @@
 package verdict
 
-import "math"
-
 // Defaults are the limits used where the settings give none. Sources: the
 // simulation study and the trade habits the project's needs rest on; limits
 // marked ours are nobody's rule.
@@ -43,7 +41,4 @@ var Defaults = Limits{
 	"ladder.nominal":        {Note: AtMost(0.25), Hold: AtMost(0.5)},  // share of rungs more than 0.1 off nominal
 	"ph.name":               {Note: AtMost(0.02), Hold: AtMost(0.05)}, // pH, name against table
 	"limit.distance":        {Note: AtLeast(2), Hold: AtLeast(1.5)},   // pH, three-solution sets
-	"isosbestic":            {Note: AtMost(0.01), Hold: AtMost(0.03)}, // relative spread at the crossing
-	"ionic.strength":        {Note: Within(5), Hold: Within(10)},      // % from nominal
-	"bubble.noise":          {Note: AtMost(3), Hold: AtMost(math.Inf(1))},
 }
