@@ -47,7 +47,7 @@ func (l *look) next(r *ranked) *Check {
 	}
 	a := r.list[0]
 	b, found := a, false
-	for _, c := range r.list[1:] {
+	for _, c := range r.list[1:min(len(r.list), shown)] {
 		if !l.nested(a, c) {
 			b, found = c, true
 			break

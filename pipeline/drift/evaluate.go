@@ -119,6 +119,9 @@ type rankedCause struct {
 	logged   bool
 }
 
+// shown is how many candidates have their sizes worked out; no more are ever shown.
+const shown = 16
+
 // rank turns evidence into odds: the weight of a cause on a resource is the sum
 // over onsets and shapes of Bayes factor times prior odds.
 func (l *look) rank(outs []outcome) *ranked {
@@ -142,6 +145,10 @@ func (l *look) rank(outs []outcome) *ranked {
 	})
 	if len(r.list) == 0 {
 		return r
+	}
+	for i := range r.list[:min(len(r.list), shown)] {
+		c := &r.list[i]
+		c.h = l.again(c.out.s, c.shape, c.onset)
 	}
 	r.none = l.unstructured(r.list[0].onset) - math.Log(float64(l.nights))
 	r.total = r.none
@@ -176,7 +183,6 @@ func (l *look) weighOnsets(o *outcome) rankedCause {
 			c.weight = logAdd(c.weight, v)
 		}
 	}
-	c.h = l.again(o.s, c.shape, c.onset)
 	c.interval = credible(onset, c.weight, 0.9, c.onset)
 	return c
 }

@@ -14,15 +14,15 @@ const (
 // sums are what a hypothesis has gathered over its nights: products with y,
 // with the explained disturbances, and with itself.
 type sums struct {
-	p [2]float64           // x' V^-1 y
-	e [maxExtra][2]float64 // x' z
-	q [3]float64           // sum s^2 j' W j: 00, 01, 11
-	g [][]float64          // per cell of the scope: columns*k, sum s L' W j
-	n int                  // observations with s > 0
+	p [2]float64   // x' V^-1 y
+	e [][2]float64 // x' z
+	q [3]float64   // sum s^2 j' W j: 00, 01, 11
+	g [][]float64  // per cell of the scope: columns*k, sum s L' W j
+	n int          // observations with s > 0
 }
 
 func newSums(l *look, s *scope, columns int) *sums {
-	a := &sums{g: make([][]float64, len(s.cells))}
+	a := &sums{g: make([][]float64, len(s.cells)), e: make([][2]float64, len(l.extra))}
 	total := 0
 	for _, i := range s.cells {
 		total += columns * l.cells[i].c.k
@@ -36,20 +36,21 @@ func newSums(l *look, s *scope, columns int) *sums {
 }
 
 func (a *sums) clear() {
-	g := a.g
-	for _, x := range g {
+	for _, x := range a.g {
 		clear(x)
 	}
-	*a = sums{g: g}
+	clear(a.e)
+	*a = sums{g: a.g, e: a.e}
 }
 
 func (a *sums) copyFrom(b *sums) {
-	g := a.g
+	g, e := a.g, a.e
 	for i := range g {
 		copy(g[i], b.g[i])
 	}
+	copy(e, b.e)
 	*a = *b
-	a.g = g
+	a.g, a.e = g, e
 }
 
 // addLinear adds the sums of b that are linear in the shape.
@@ -227,7 +228,7 @@ func (l *look) scan(s *scope, keep bool) outcome {
 			if sh == ShapeStep {
 				weight = stepWeight
 			}
-			if h.lnB > out.sum-20 {
+			if h.lnB > out.sum-12 {
 				out.sum = logAdd(out.sum, h.lnB+weight)
 			}
 			if h.lnB > out.best.lnB {

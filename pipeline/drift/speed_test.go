@@ -186,3 +186,17 @@ func TestDenseScoreAgrees(t *testing.T) {
 		t.Errorf("ln B %.10g, dense %.10g", got, want)
 	}
 }
+
+// BenchmarkNightCalibrations is BenchmarkNight where calibrations are known to differ.
+func BenchmarkNightCalibrations(b *testing.B) {
+	l, _, h := bigLab(b, 60)
+	m, err := NewModel(l.cells, Rules{CalibrationPH: 0.002}, Plain)
+	if err != nil {
+		b.Fatal(err)
+	}
+	for b.Loop() {
+		if _, err := m.Evaluate(h); err != nil {
+			b.Fatal(err)
+		}
+	}
+}
