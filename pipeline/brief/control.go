@@ -3,6 +3,8 @@ package brief
 import (
 	"fmt"
 	"math"
+	"slices"
+	"strings"
 	"time"
 )
 
@@ -69,16 +71,21 @@ func flagKey(c *Chart) []flagged {
 	return out
 }
 
-// controlRange is the vertical range: limits and values, a value far outside
-// not pressing the rest flat.
+// controlRange is the vertical range: limits, weighted mean and most values. A
+// few values far outside do not press the rest flat; they are drawn as arrows.
 func controlRange(c *Chart) span {
 	y := nothing()
 	y.take(c.Low, c.High, c.Centre)
-	base := y
-	y.take(c.Values...)
+	w := y.hi - y.lo
+	base := span{y.lo - w, y.hi + w}
 	y.take(c.EWMA...)
-	if w := base.hi - base.lo; !base.empty() && w > 0 && known(w) {
-		y.lo, y.hi = math.Max(y.lo, base.lo-3*w), math.Min(y.hi, base.hi+3*w)
+	y.take(c.Values...)
+	if sorted := slices.DeleteFunc(slices.Clone(c.Values), func(v float64) bool { return !known(v) }); w > 0 && known(w) && len(sorted) > 0 {
+		slices.Sort(sorted)
+		aside := len(sorted) / 20
+		base.take(c.EWMA...)
+		base.take(sorted[aside], sorted[len(sorted)-1-aside])
+		y.lo, y.hi = math.Max(y.lo, base.lo), math.Min(y.hi, base.hi)
 	}
 	if known(c.Assigned) && !y.empty() {
 		// An assigned value far away is said below the picture, not drawn.
@@ -103,7 +110,7 @@ func controlPicture(id string, c *Chart) string {
 	f := newFrame(p, span{x.lo - 0.7, x.hi + 0.7}, controlRange(c))
 	f.beyond(c.Low, c.High)
 	f.onset(c, at, dates)
-	f.rule(unitName(c.Unit))
+	f.rule(c.axis())
 	f.nightFoot(c, x, dates)
 	f.level("centre", c.Centre)
 	f.level("limit", c.Low)
@@ -114,11 +121,24 @@ func controlPicture(id string, c *Chart) string {
 	return p.svg()
 }
 
-func unitName(unit string) string {
-	if unit == "" || unit == "1" {
-		return "value"
+// axis names the vertical axis: the unit, or what is charted where that is a
+// bare number.
+func (c *Chart) axis() string {
+	if c.Unit != "" && c.Unit != "1" {
+		return c.Unit
 	}
-	return unit
+	if _, name, ok := strings.Cut(c.Title, ": "); ok {
+		return short(name, 26)
+	}
+	return "value"
+}
+
+// number writes a value with the decimals that the limits of its chart call for.
+func (c *Chart) number(v float64) string {
+	if w := c.High - c.Low; known(w) && w > 1e-6 && w < 1e6 && known(v) && math.Abs(v) < 1e9 {
+		return fixed(v, decimals(w/4))
+	}
+	return general(v)
 }
 
 // controlWords describes a chart for people who hear it.
@@ -132,13 +152,13 @@ func controlWords(c *Chart) string {
 	}
 	s := fmt.Sprintf("%d nights from %s to %s, %d with a value", len(c.Nights), c.Nights[0], c.Nights[len(c.Nights)-1], n)
 	if known(last) {
-		s += ", the last " + general(last)
+		s += ", the last " + c.number(last)
 	}
 	if known(c.Centre) {
-		s += "; centre " + general(c.Centre)
+		s += "; centre " + c.number(c.Centre)
 	}
 	if known(c.Low) && known(c.High) {
-		s += "; action limits " + general(c.Low) + " and " + general(c.High)
+		s += "; action limits " + c.number(c.Low) + " and " + c.number(c.High)
 	}
 	if k := flagKey(c); len(k) > 0 {
 		s += fmt.Sprintf("; %d kinds of flag, listed below", len(k))
@@ -200,7 +220,11 @@ func (f *frame) onset(c *Chart, at []float64, dates bool) {
 	f.line("began", a, f.top, b, f.top)
 	f.line("began", a, f.top, a, f.top+6)
 	f.line("began", b, f.top, b, f.top+6)
-	f.tag("note halo", b-4, f.top+10, "began")
+	if b+3+letters("began") > f.right {
+		f.text("note halo", "end", a-3, f.top+10, "began")
+		return
+	}
+	f.text("note halo", "start", b+3, f.top+10, "began")
 }
 
 func (f *frame) night(c *Chart, night string, at []float64, dates bool) float64 {
@@ -244,7 +268,7 @@ func (f *frame) inside(v []float64) []float64 {
 }
 
 // nightMarks draws the values: rings, flagged ones full diamonds with their
-// letter, those outside the field arrows at its edge.
+// letter, those outside the field arrows at its edge with their value.
 func (f *frame) nightMarks(c *Chart, at []float64) {
 	letter, _ := flagLetters(c)
 	r := math.Max(1.8, math.Min(3.4, (f.right-f.left)/float64(len(at))/2.2))
@@ -260,32 +284,38 @@ func (f *frame) nightMarks(c *Chart, at []float64) {
 			}
 			continue
 		}
-		q := f.at(at[i], v)
-		shape, class := rune(dot), "mark"
-		if flag != "" {
-			shape, class, q.y = diamond, "mark bad full", f.clamp(q.y)
-		}
-		switch {
-		case v > f.y1:
-			shape, q.y = upward, f.top+5
-		case v < f.y0:
-			shape, q.y = down, f.bottom-5
-		}
-		if flag != "" {
-			f.mark(shape, class, q.x, q.y, r+1.2)
-		} else {
-			f.mark(shape, class, q.x, q.y, r)
-		}
+		q, label := f.nightMark(at[i], v, r, flag != ""), letter[flag]
+		far := v > f.y1 || v < f.y0
 		// One letter for a row of nights with the same flag, where they are too close for one each.
-		if flag != "" && (q.x-lettered >= 11 || flag != before && q.x-lettered >= 7) {
-			y := q.y - r - 5
-			if y < f.top+8 {
-				y = q.y + r + 12
-			}
-			f.text("flag", "middle", q.x, y, letter[flag])
-			lettered, before = q.x, flag
+		if !far && (flag == "" || q.x-lettered < 7 || flag == before && q.x-lettered < 11) {
+			continue
 		}
+		if far {
+			label = strings.TrimSpace(label + " " + c.number(v))
+		}
+		y := q.y - r - 5
+		if y < f.top+8 {
+			y = q.y + r + 12
+		}
+		half := letters(label) / 2
+		f.text("flag", "middle", math.Max(f.left+half, math.Min(f.right-half, q.x)), y, label)
+		lettered, before = q.x, flag
 	}
 }
 
-func (f *frame) clamp(y float64) float64 { return math.Max(f.top, math.Min(f.bottom, y)) }
+// nightMark draws one value and says where.
+func (f *frame) nightMark(at, v, r float64, flag bool) point {
+	q := f.at(at, v)
+	shape, class := rune(dot), "mark"
+	if flag {
+		shape, class, r = diamond, "mark bad full", r+1.2
+	}
+	switch {
+	case v > f.y1:
+		shape, q.y, r = upward, f.top+5, r+1
+	case v < f.y0:
+		shape, q.y, r = down, f.bottom-5, r+1
+	}
+	f.mark(shape, class, q.x, q.y, r)
+	return q
+}

@@ -39,7 +39,11 @@ func (s span) widened(share float64) span {
 // newFrame lays the field into a picture: room on the left for numbers and
 // name of the vertical axis, below for those of the other.
 func newFrame(p *pen, x, y span) *frame {
-	return &frame{pen: p, left: 50, right: p.w - 10, top: 12, bottom: p.h - 36, x0: x.lo, x1: x.hi, y0: y.lo, y1: y.hi}
+	left := 44.0
+	for _, t := range ticks(y.lo, y.hi, 5) {
+		left = math.Max(left, 24+letters(t.label))
+	}
+	return &frame{pen: p, left: left, right: p.w - 10, top: 12, bottom: p.h - 36, x0: x.lo, x1: x.hi, y0: y.lo, y1: y.hi}
 }
 
 func (f *frame) px(v float64) float64 { return f.left + (v-f.x0)/(f.x1-f.x0)*(f.right-f.left) }

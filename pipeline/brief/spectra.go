@@ -82,6 +82,7 @@ func familyPicture(id string, s *Set) string {
 	}
 	p := draw(id, "Spectra of "+s.Key, about+".", 360, 236)
 	f := newFrame(p, flat(x), y.widened(0.06))
+	f.top = 26 // room for the key of pH and the isosbestic point
 	f.rule("absorbance")
 	f.foot("wavelength / nm", ticks(f.x0, f.x1, 6))
 	var accused *spectrum
@@ -100,7 +101,7 @@ func familyPicture(id string, s *Set) string {
 		}
 	}
 	f.isosbestic(s.IsosbesticNM, s.WavelengthNM, list)
-	f.scale(list)
+	f.scale(list, s.IsosbesticNM)
 	return p.svg()
 }
 
@@ -159,9 +160,11 @@ func (f *frame) isosbestic(nm float64, x []float64, list []spectrum) {
 	}
 	slices.Sort(there)
 	q := f.at(nm, there[len(there)/2])
-	f.line("iso", q.x, f.top+24, q.x, q.y-5)
+	f.line("iso", q.x, f.top-4, q.x, q.y-5)
 	f.mark(dot, "ring", q.x, q.y, 5)
-	f.tag("note halo", q.x-4, f.top+28, "isosbestic "+fixed(nm, 1)+" nm")
+	label := "isosbestic " + fixed(nm, 1) + " nm"
+	half := letters(label) / 2
+	f.text("note", "middle", math.Max(f.left+half-6, math.Min(f.right-half, q.x)), f.top-8, label)
 }
 
 // between interpolates a curve on an ascending or descending grid.
@@ -175,8 +178,8 @@ func between(x, y []float64, at float64) float64 {
 	return math.NaN()
 }
 
-// scale says, inside the field, which look is which pH.
-func (f *frame) scale(list []spectrum) {
+// scale says, above the field, which look is which pH.
+func (f *frame) scale(list []spectrum, nm float64) {
 	lo, hi := math.NaN(), math.NaN()
 	for _, c := range list {
 		if known(c.rung.PH) {
@@ -189,14 +192,19 @@ func (f *frame) scale(list []spectrum) {
 	if math.IsNaN(lo) || len(list) < 2 {
 		return
 	}
-	right := f.right - 4
-	f.text("note halo", "end", right, f.top+9, "pH "+fixed(hi, 1))
-	x := right - letters("pH 10.0")
-	for i := shades - 1; i >= 0; i-- {
-		f.line(fmt.Sprintf("c s%d", i), x-7, f.top+5.5, x-1, f.top+5.5)
-		x -= 7
+	// The key stands on the side that the isosbestic label leaves free.
+	x, y := f.right-letters("4.00 10.0")-8*shades, f.top-8
+	if known(nm) && f.px(nm) > (f.left+f.right)/2 {
+		x = f.left
 	}
-	f.text("note halo", "end", x-3, f.top+9, fixed(lo, 1))
+	low := "pH " + fixed(lo, 1)
+	f.text("note", "start", x, y, low)
+	x += letters(low)
+	for i := range shades {
+		f.line(fmt.Sprintf("c s%d", i), x, y-3.5, x+8, y-3.5)
+		x += 8
+	}
+	f.text("note", "start", x+3, y, fixed(hi, 1))
 }
 
 // A limit is the spectrum of one form with its deviation.

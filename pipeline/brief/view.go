@@ -172,6 +172,11 @@ func (v *view) set(s *Set, anchor string, pictures bool) setView {
 	return sv
 }
 
+// More says whether there is anything to open beneath a set.
+func (s setView) More() bool {
+	return len(s.Reasons)+len(s.Thermo)+len(s.Beside)+len(s.Lot)+len(s.Limits)+len(s.Budget) > 0 || s.Table
+}
+
 // numbers states the constants of a set.
 func numbers(s *Set) []number {
 	var out []number
@@ -199,10 +204,10 @@ func conditions(s *Set) string {
 		parts = append(parts, s.Constant)
 	}
 	if known(s.TemperatureC) {
-		parts = append(parts, fixed(s.TemperatureC, 1)+" °C")
+		parts = append(parts, fixed(s.TemperatureC, 1)+"\u00a0°C")
 	}
 	if known(s.Ionic) && s.Ionic >= 0 {
-		parts = append(parts, "I = "+fixed(s.Ionic, 3)+" mol/L")
+		parts = append(parts, "I\u00a0=\u00a0"+fixed(s.Ionic, 3)+"\u00a0mol/L")
 	}
 	return strings.Join(parts, ", ")
 }
@@ -237,19 +242,19 @@ func (v *view) chart(c *Chart) chartView {
 	cv.Picture = v.picture(func(id string) string { return controlPicture(id, c) })
 	for i := min(len(c.Values), len(c.Nights)) - 1; i >= 0; i-- {
 		if known(c.Values[i]) {
-			cv.Last = c.Nights[i] + ": " + strings.TrimSpace(general(c.Values[i])+" "+c.Unit)
+			cv.Last = c.Nights[i] + ": " + strings.TrimSpace(c.number(c.Values[i])+" "+c.Unit)
 			break
 		}
 	}
 	var parts []string
 	add := func(name string, x float64) {
 		if known(x) {
-			parts = append(parts, name+" "+general(x))
+			parts = append(parts, name+" "+c.number(x))
 		}
 	}
 	add("centre", c.Centre)
 	if known(c.Low) && known(c.High) {
-		parts = append(parts, "action limits "+general(c.Low)+" and "+general(c.High))
+		parts = append(parts, "action limits "+c.number(c.Low)+" and "+c.number(c.High))
 	} else {
 		add("lower action limit", c.Low)
 		add("upper action limit", c.High)
