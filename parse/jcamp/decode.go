@@ -10,6 +10,7 @@
 package jcamp
 
 import (
+	"bytes"
 	"fmt"
 
 	"pkvigil/parse"
@@ -145,6 +146,9 @@ func Decode(name string, data []byte, opt parse.Options) (*File, error) {
 	text, enc, err := parse.Decode(name, data, "")
 	if err != nil {
 		return nil, err
+	}
+	if i := bytes.IndexByte(text, 0); i >= 0 {
+		return nil, &parse.Error{File: name, Line: 1 + bytes.Count(text[:i], []byte{'\n'}), Found: "a NUL character", Expected: "printable text", Remedy: "the file is damaged; export it again"}
 	}
 	d := &decoder{name: name, text: lineEnds(text), file: &File{Encoding: enc}}
 	d.budget = min(1<<20+4*len(data), maxPoints)

@@ -1,7 +1,6 @@
 package jcamp
 
 import (
-	"math"
 	"regexp"
 	"strconv"
 	"strings"
@@ -305,5 +304,5 @@ func civil(y int, month, day string) (time.Time, bool) {
 	mo, _ := strconv.Atoi(month)
 	dd, _ := strconv.Atoi(day)
 	t := time.Date(y, time.Month(mo), dd, 0, 0, 0, 0, time.UTC)
-	return t, mo >= 1 && mo <= 12 && t.Day() == dd && t.Month() == time.Month(mo) && !math.IsNaN(float64(dd))
+	return t, mo >= 1 && mo <= 12 && t.Day() == dd && t.Month() == time.Month(mo)
 }

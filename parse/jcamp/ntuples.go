@@ -88,22 +88,21 @@ func (d *decoder) symbols(t *Table, raw []byte, group string) (list, error) {
 	names := n.symbolRow()
 	l := list{x: -1, y: -1}
 	for group != "" {
-		at, size := -1, 0
-		for i, s := range names {
-			if s != "" && len(s) > size && strings.HasPrefix(group, strings.ToUpper(s)) {
-				at, size = i, len(s)
-			}
+		size := 1 // a letter and the digits behind it
+		for size < len(group) && group[size]-'0' <= 9 {
+			size++
 		}
-		if at < 0 || l.size >= 8 {
+		at := slices.IndexFunc(names, func(s string) bool { return strings.EqualFold(s, group[:size]) })
+		if at < 0 || l.size >= 8 || !word(group[:size]) {
 			return list{}, d.badList(t, raw)
 		}
 		switch dependent := strings.HasPrefix(strings.ToUpper(n.entry("VARTYPE", at)), "DEP"); {
 		case !dependent && l.x < 0:
-			l.x, t.XSymbol = l.size, names[at]
+			l.x, t.XSymbol = l.size, group[:size]
 		case !dependent:
 			return list{}, d.fail(t.Line, t.Kind, parse.Show(raw), "one independent variable", "tables of two dimensions are not read")
 		case l.y < 0:
-			l.y, t.YSymbol = l.size, names[at]
+			l.y, t.YSymbol = l.size, group[:size]
 		}
 		group, l.size = group[size:], l.size+1
 	}

@@ -9,7 +9,7 @@ import (
 
 // steady reads a (X++(Y..Y)) table: abscissae from the header, those of the
 // lines as a check.
-func (d *decoder) steady(b *Block, t *Table, f frame, r record) error {
+func (d *decoder) steady(t *Table, f frame, r record) error {
 	a := asdf{b: r.body, line: r.line + 1, point: f.point, xf: f.xf, limit: d.budget}
 	if f.n >= 0 {
 		a.limit = f.n
@@ -59,12 +59,14 @@ func (d *decoder) steady(b *Block, t *Table, f frame, r record) error {
 	for i := range t.X {
 		t.X[i] = f.first + float64(i)*span/n
 	}
+	if len(t.X) > 1 {
+		t.X[len(t.X)-1] = f.last
+	}
 	if f.yf != 1 {
 		for i := range t.Y {
 			t.Y[i] *= f.yf
 		}
 	}
-	d.compare(b, t, f)
 	return nil
 }
 

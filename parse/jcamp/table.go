@@ -64,7 +64,7 @@ func (d *decoder) fill(b *Block, t *Table, value []byte, r record) error {
 	}
 	switch {
 	case l.steady:
-		return d.steady(b, t, f, r)
+		err = d.steady(t, f, r)
 	case l.text:
 		err = d.assignments(t, f, l, r)
 	default:
@@ -73,8 +73,15 @@ func (d *decoder) fill(b *Block, t *Table, value []byte, r record) error {
 	if err != nil {
 		return err
 	}
-	if err := d.counted(t, f, r); err != nil {
-		return err
+	if !l.steady {
+		if err := d.counted(t, f, r); err != nil {
+			return err
+		}
+	}
+	for i, v := range t.Y {
+		if math.IsInf(v, 0) || math.IsInf(t.X[i], 0) || t.X[i] != t.X[i] {
+			return d.fail(r.line, t.Kind, "a number beyond 1.8e308 after multiplication with its factor", "finite numbers", "correct the factors")
+		}
 	}
 	d.compare(b, t, f)
 	return nil
@@ -128,7 +135,7 @@ func (d *decoder) list(t *Table, value []byte) (list, error) {
 	}
 	if x, y, ok := strings.Cut(form, "++("); ok {
 		a, z, ok := strings.Cut(strings.TrimRight(y, ")"), "..")
-		if !ok || a != z || x == "" || a == "" {
+		if !ok || a != z || x == a || !word(x) || !word(a) {
 			return list{}, d.badList(t, raw)
 		}
 		if t.Kind != "DATATABLE" && (x != t.XSymbol || a != t.YSymbol) {
@@ -174,6 +181,11 @@ func cutList(s string) (form, rest string, closed bool) {
 
 func (d *decoder) badList(t *Table, raw []byte) error {
 	return d.fail(t.Line, t.Kind, parse.Show(raw), "a published variable list such as (X++(Y..Y)) or (XY..XY)", "the form of the table is not known")
+}
+
+// word tells whether a symbol is made of letters and digits.
+func word(s string) bool {
+	return s != "" && strings.Trim(s, "ABCDEFGHIJKLMNOPQRSTUVWXYZ0123456789") == ""
 }
 
 // lettered reads a group of one-letter variables.
