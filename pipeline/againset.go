@@ -55,7 +55,7 @@ func (s *Service) Recompute(ctx context.Context, id int64) (*Again, error) {
 	}
 	in.Exchange, in.Corrections = rec.Exchange, rec.Used.Corrections
 	now := assay.Compute(*in)
-	again, err := s.result(data, in, &rec.Used, now, r.At)
+	again, err := s.result(ctx, data, in, &rec.Used, now, r.At)
 	if err != nil {
 		return nil, err
 	}

@@ -124,9 +124,9 @@ func (s *Service) briefCases(ctx context.Context, d *brief.Data, now time.Time) 
 func (s *Service) briefCase(ctx context.Context, c db.Case, d *brief.Data) (*brief.Case, error) {
 	one := &brief.Case{ID: c.ID, Sentence: c.Sentence, State: c.State, Resource: c.Resource, NextCheck: c.NextCheck, Opened: c.OpenedAt.In(d.Made.Location()),
 		Answer: fmt.Sprintf("pkvigil sign acknowledge %d --as NAME --because \"...\"", c.ID)}
-	var dc drift.Case
-	if err := json.Unmarshal(c.Evaluation, &dc); err != nil {
-		return nil, fmt.Errorf("case %s: %w", c.Key, err)
+	dc, err := caseOf(c)
+	if err != nil {
+		return nil, err
 	}
 	e := dc.Explanation
 	one.Finding, one.Alike = string(e.Finding), e.Alike

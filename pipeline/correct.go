@@ -127,9 +127,9 @@ func (s *Service) signAccept(ctx context.Context, tx pgx.Tx, g Signature, d *db.
 }
 
 func (s *Service) acceptCase(ctx context.Context, tx pgx.Tx, row *db.Case, d *db.Deed) (string, error) {
-	var c drift.Case
-	if err := json.Unmarshal(row.Evaluation, &c); err != nil {
-		return "", fmt.Errorf("case %s: %w", row.Key, err)
+	c, err := caseOf(*row)
+	if err != nil {
+		return "", err
 	}
 	for _, k := range c.Explanation.Candidates {
 		if k.Resource.Kind != drift.KindBuffer || len(k.Now) == 0 {

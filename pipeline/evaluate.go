@@ -114,7 +114,7 @@ func (s *Service) scene(ctx context.Context, ts []*track, night string, now time
 	if err := s.uses(ctx, set, sc, now); err != nil {
 		return nil, err
 	}
-	if err := s.masks(ctx, sc, now); err != nil {
+	if err := s.follow(ctx, sc, now); err != nil {
 		return nil, err
 	}
 	var err error
@@ -132,7 +132,7 @@ func (s *Service) model(cells []drift.Cell, nights float64) (*drift.Model, error
 	s.cacheMu.Lock()
 	defer s.cacheMu.Unlock()
 	if s.lastModel == nil || !bytes.Equal(key, s.lastCells) {
-		m, err := drift.NewModel(cells, drift.Rules{FalseAlarmNights: nights}, drift.Weighted)
+		m, err := drift.NewModel(cells, drift.Rules{FalseAlarmNights: nights, CalibrationPH: calibrationPH}, drift.Weighted)
 		if err != nil {
 			return nil, err
 		}
@@ -140,6 +140,10 @@ func (s *Service) model(cells []drift.Cell, nights float64) (*drift.Model, error
 	}
 	return s.lastModel, nil
 }
+
+// calibrationPH is how far readings move from one calibration to the next in
+// control: 0.3 mV in each buffer (common practice, no source).
+const calibrationPH = 0.005
 
 // prints gives the fingerprints of the habits for a design, once per design.
 func (s *Service) prints(d *drift.Design) map[drift.Cause][]map[drift.Characteristic]float64 {
@@ -511,27 +515,38 @@ func timeline(events []db.EventRow, instrument, kind, initial string, first, las
 	return slices.DeleteFunc(out, func(t stretch) bool { return t.name == "" || t.until < first || t.until < t.from })
 }
 
-// masks takes closed disturbances out of later evaluations.
-func (s *Service) masks(ctx context.Context, sc *scene, now time.Time) error {
-	all, err := s.store.Cases(ctx, nil, now)
+// follow tells the history what the cases so far mean for it: closed ones are
+// taken out of the observations, open ones are watched.
+func (s *Service) follow(ctx context.Context, sc *scene, now time.Time) error {
+	rows, err := s.store.Cases(ctx, nil, now)
 	if err != nil {
 		return err
 	}
-	for _, c := range all {
-		if c.State != db.CaseClosed {
-			continue
+	cases := make([]drift.Case, len(rows))
+	for i, r := range rows {
+		if cases[i], err = caseOf(r); err != nil {
+			return err
 		}
-		var d drift.Case
-		if err := json.Unmarshal(c.Evaluation, &d); err != nil {
-			return fmt.Errorf("case %s: stored evaluation: %w", c.Key, err)
-		}
-		if len(d.Explanation.Candidates) == 0 {
-			continue
-		}
-		w := d.Explanation.Candidates[0]
-		sc.history.Masks = append(sc.history.Masks, drift.Mask{Resource: w.Resource, Cause: w.Cause, From: w.Since.Low, Until: d.Closed})
 	}
+	sc.history.Follow(cases)
 	return nil
+}
+
+// caseOf brings a stored case back; what a person decided since counts.
+func caseOf(r db.Case) (drift.Case, error) {
+	var c drift.Case
+	if err := json.Unmarshal(r.Evaluation, &c); err != nil {
+		return c, fmt.Errorf("case %s: stored evaluation: %w", r.Key, err)
+	}
+	c.ID = r.ID
+	switch {
+	case r.State == db.CaseAcknowledged && c.State == drift.Open:
+		c.State, c.AckBy, c.AckWhy = drift.Acknowledged, r.Actor, r.Because
+	case r.State == db.CaseClosed && c.State != drift.Closed:
+		c.State, c.ClosedWhy = drift.Closed, r.Because
+		c.Closed = drift.NightOf(r.At)
+	}
+	return c, nil
 }
 
 // judgeSystem evaluates the night, moves the cases on, and speaks where a
@@ -551,12 +566,8 @@ func (s *Service) judgeSystem(ctx context.Context, tx pgx.Tx, sc *scene, signals
 	}
 	open := make([]drift.Case, len(rows))
 	for i, r := range rows {
-		if err := json.Unmarshal(r.Evaluation, &open[i]); err != nil {
-			return fmt.Errorf("case %s: stored evaluation: %w", r.Key, err)
-		}
-		open[i].ID = r.ID
-		if r.State == db.CaseAcknowledged {
-			open[i].State = drift.Acknowledged
+		if open[i], err = caseOf(r); err != nil {
+			return err
 		}
 	}
 	next, changes := drift.Update(open, ev, sc.history.Events, nil, drift.CaseRules{ImpactLimit: set.Charts.ImpactLimit})

@@ -153,6 +153,12 @@ func (s *Service) leased(ctx context.Context, r watcher.Report) []watcher.File {
 	now := s.clock.Now()
 	for _, st := range r.States {
 		held, other, err := s.store.ClaimRoot(ctx, st.Root, s.holder(), now, leaseFor)
+		if won := err == nil && held; won && !s.holds[st.Root] {
+			s.watch.Recall(st.Root) // what another process took in meanwhile is known now
+			s.holds[st.Root] = true
+		} else if !won {
+			delete(s.holds, st.Root)
+		}
 		if err == nil && !held {
 			err = fmt.Errorf("process %d on %s sweeps it since %s; waiting for its lease", other.PID, other.Host, other.Since.Format(time.RFC3339))
 		}

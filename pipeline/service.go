@@ -56,11 +56,13 @@ type Service struct {
 	mu         sync.Mutex // guards what a reload replaces
 	set        *settings.Settings
 	settingsID int64
+	text       []byte // the settings in force as read
 	rules      *naming.Rules
 
 	watch        *watcher.Watcher
 	knownSets    []naming.KnownSet // sets a parked file might belong to; owned by the take-in
 	once         onChange
+	holds        map[string]bool // roots whose lease this process has; owned by the sweep
 	serverConfig cluster.Config
 	serverDown   bool // the replay stopped the private server on purpose
 	tickMu       sync.Mutex
@@ -90,7 +92,7 @@ type stop struct {
 // Open connects to the database, or starts the private server, brings a
 // private schema up to date and makes the queue ready. Nothing runs yet.
 func Open(ctx context.Context, cfg Config) (*Service, error) {
-	s := &Service{cfg: cfg, log: cfg.Log, clock: cfg.Clock}
+	s := &Service{cfg: cfg, log: cfg.Log, clock: cfg.Clock, holds: map[string]bool{}}
 	if s.clock == nil {
 		s.clock = MachineClock{}
 	}
@@ -101,6 +103,7 @@ func Open(ctx context.Context, cfg Config) (*Service, error) {
 		}
 	}()
 	s.adopt(cfg.Settings)
+	s.text = cfg.Text
 	if err := s.connect(ctx); err != nil {
 		return nil, err
 	}

@@ -40,7 +40,7 @@ func (s *Service) computeSet(ctx context.Context, a job.Set, done func(context.C
 		return fmt.Errorf("set %s: %w", data.Set.Key, err)
 	}
 	out := assay.Compute(*in)
-	res, err := s.result(data, in, used, out, a.At)
+	res, err := s.result(ctx, data, in, used, out, a.At)
 	if err != nil {
 		return fmt.Errorf("set %s: %w", data.Set.Key, err)
 	}
@@ -280,7 +280,7 @@ type record struct {
 }
 
 // result states an outcome as rows.
-func (s *Service) result(data *db.SetData, in *assay.Input, u *used, out *assay.Outcome, at time.Time) (*db.Result, error) {
+func (s *Service) result(ctx context.Context, data *db.SetData, in *assay.Input, u *used, out *assay.Outcome, at time.Time) (*db.Result, error) {
 	rec, err := recordOf(in, u, out)
 	if err != nil {
 		return nil, err
@@ -312,7 +312,9 @@ func (s *Service) result(data *db.SetData, in *assay.Input, u *used, out *assay.
 			}
 		}
 	}
-	r.InputSHA256 = inputHash(data, u, in.Exchange)
+	if r.InputSHA256, err = s.inputHash(ctx, data, u, in.Exchange); err != nil {
+		return nil, err
+	}
 	r.Inputs = inputs(data, out)
 	r.Checks = checks(out.Report)
 	if out.Fit != nil && len(out.Constants) > 0 {
@@ -449,14 +451,46 @@ func inputs(data *db.SetData, out *assay.Outcome) []db.Input {
 	return rows
 }
 
-// inputHash covers the bytes of every member and everything else that was read.
-func inputHash(data *db.SetData, u *used, ex [][2]string) [32]byte {
+// inputHash covers the bytes of every member and everything else that was
+// read, by natural names: the same input has the same hash in every database.
+func (s *Service) inputHash(ctx context.Context, data *db.SetData, u *used, ex [][2]string) ([32]byte, error) {
 	var b strings.Builder
 	for _, m := range data.Members {
 		fmt.Fprintf(&b, "%s|%s|%s|%x|%v\n", m.Role, m.Rung, m.Rep, m.SHA256, m.ScanID != nil)
 	}
-	fmt.Fprintf(&b, "settings %d calibration %d archive %d electrode %s exchange %v buffers %v\n", u.SettingsID, u.CalibrationID, u.ArchiveID, u.Electrode, ex, u.Corrections)
-	return sha256.Sum256([]byte(b.String()))
+	text, err := s.settingsText(ctx, u.SettingsID)
+	if err != nil {
+		return [32]byte{}, err
+	}
+	fmt.Fprintf(&b, "settings %s electrode %s exchange %v buffers %v\n", settings.Hash(text), u.Electrode, ex, u.Corrections)
+	if u.CalibrationID != 0 {
+		c, err := s.store.CalibrationByID(ctx, nil, u.CalibrationID)
+		if err != nil {
+			return [32]byte{}, err
+		}
+		if c != nil {
+			fmt.Fprintf(&b, "calibration %s %s %v\n", c.Electrode, c.Measured.UTC().Format(time.RFC3339), c.Points)
+		}
+	}
+	if u.ArchiveID != 0 {
+		sum, err := s.store.InputOf(ctx, u.ArchiveID)
+		if err != nil {
+			return [32]byte{}, err
+		}
+		fmt.Fprintf(&b, "archive %x\n", sum)
+	}
+	return sha256.Sum256([]byte(b.String())), nil
+}
+
+// settingsText gives a stored settings file; the one in force is at hand.
+func (s *Service) settingsText(ctx context.Context, id int64) ([]byte, error) {
+	s.mu.Lock()
+	text, now := s.text, s.settingsID
+	s.mu.Unlock()
+	if id == now && len(text) > 0 {
+		return text, nil
+	}
+	return s.store.Settings(ctx, id)
 }
 
 func recordOf(in *assay.Input, u *used, out *assay.Outcome) (json.RawMessage, error) {

@@ -129,7 +129,7 @@ func (s *Service) Reload(ctx context.Context, next *settings.Settings, text []by
 	}
 	s.adopt(next)
 	s.mu.Lock()
-	s.settingsID = id
+	s.settingsID, s.text = id, text
 	s.mu.Unlock()
 	s.log.Info().Int64("version", id).Msg("settings read again; folders and workers change at the next start")
 }
@@ -175,6 +175,11 @@ func (s *Service) foundCases(ctx context.Context, story *rehearse.Story, out *re
 			return err
 		}
 		for _, r := range rank {
+			if r.Rank == 1 { // the thing accused now, not the one the case was opened with
+				if _, f.Resource, _ = strings.Cut(r.Resource, " "); f.Resource == "" {
+					f.Resource = r.Resource
+				}
+			}
 			if r.Rank > 1 {
 				f.Others = append(f.Others, r.Cause)
 			}

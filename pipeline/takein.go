@@ -225,6 +225,8 @@ func (s *Service) decide(ctx context.Context, tx pgx.Tx, items []*item, now time
 	}
 	inBatch := map[[32]byte]*item{}
 	var todo []*item
+	// An original counts before its copy, whatever order they were found in.
+	slices.SortStableFunc(items, func(a, b *item) int { return copyRank(a) - copyRank(b) })
 	for _, it := range items {
 		if it.again != nil {
 			got.Later++
@@ -342,6 +344,9 @@ func (s *Service) judgeFile(it *item, row *db.Taken, known *db.File, sibling *it
 	switch {
 	case twin != nil && (it.matchErr != nil || it.match.Copy || sameItem(*twin, it.match)):
 		f.State, f.TwinOf = db.FileTwin, twinOf
+		if twinOf == nil {
+			row.Twin = sibling.taken
+		}
 		f.Reason = &db.Reason{Sentence: fmt.Sprintf("%s is byte-identical to %s; counted once.", it.file.Path, twinPath)}
 	case it.matchErr != nil:
 		f.State = db.FileParked
@@ -360,6 +365,17 @@ func (s *Service) judgeFile(it *item, row *db.Taken, known *db.File, sibling *it
 		f.State = db.FileTaken
 	}
 	_ = last
+}
+
+// copyRank orders originals before copies and names that no rule knows.
+func copyRank(it *item) int {
+	switch {
+	case it.matchErr != nil:
+		return 2
+	case it.match.Copy:
+		return 1
+	}
+	return 0
 }
 
 // sameItem says whether two names mean the same thing.
