@@ -130,3 +130,25 @@ func BenchmarkDraw(b *testing.B) {
 		})
 	}
 }
+
+// BenchmarkIteration is one step with evaluation on reduced data: flat in the
+// number of wavelengths.
+func BenchmarkIteration(b *testing.B) {
+	for _, nuisance := range []bool{false, true} {
+		for _, w := range []int{61, 601, 6001} {
+			b.Run(fmt.Sprintf("nuisance=%v/w=%d", nuisance, w), func(b *testing.B) {
+				p := benchSet(3, w, nuisance, 1)
+				var s Solver
+				if _, err := s.Solve(p, Options{Bare: true}); err != nil {
+					b.Fatal(err)
+				}
+				s.c.frozen = !nuisance
+				s.c.evaluate(&s.c.now, true)
+				timed(b, func() {
+					s.c.step(&s.c.now, &s.c.try, 0)
+					s.c.evaluate(&s.c.try, true)
+				})
+			})
+		}
+	}
+}

@@ -3,6 +3,7 @@ package fit
 import (
 	"fmt"
 	"math"
+	"slices"
 )
 
 // An Overlap describes two neighbouring steps that the data do not separate:
@@ -18,7 +19,8 @@ type Overlap struct {
 	LowAny  bool    `json:"low_any"`  // no lower end was found within the searched range
 	HighAny bool    `json:"high_any"` // no upper end
 	Meaning string  `json:"meaning"`  // sentence
-	Single  float64 `json:"one_step"` // pKa of the one-step fit, which the data may not tell from this one; 0: not fitted
+	Single  float64 `json:"one_step"` // pKa of the one-step fit of the same set, which may describe it as well; 0: not fitted
+	USingle float64 `json:"u_one_step"`
 }
 
 // chi95 is the 0.95 quantile of chi-square with one degree of freedom.
@@ -74,9 +76,34 @@ func (s *Solver) overlap(opt Options, est *Estimate) *Overlap {
 	if math.IsNaN(vm) || o.LowAny || o.HighAny {
 		o.UMean = math.Max((hi-lo)/3.92, 0)
 	}
-	o.Meaning = fmt.Sprintf("The data fix the mean of pKa %d and pKa %d, %.3f, but not their difference: anything from %.2f to %.2f fits as well.",
-		pair+1, pair+2, o.Mean, o.Low, o.High)
 	return o
+}
+
+// describe adds the one-step fit and the sentence.
+func (o *Overlap) describe(p *Problem, opt Options) {
+	few, most := fmt.Sprintf("%.2f", o.Low), fmt.Sprintf("%.2f", o.High)
+	if o.LowAny {
+		few = "less than " + few
+	}
+	if o.HighAny {
+		most = "more than " + most
+	}
+	o.Meaning = fmt.Sprintf("pKa %d and pKa %d cannot be told apart: their mean is %.3f (u %.3f), their difference anything from %s to %s.",
+		o.Pair+1, o.Pair+2, o.Mean, o.UMean, few, most)
+	if p.Steps != 2 {
+		return
+	}
+	q := *p
+	q.Steps, q.Start = 1, nil
+	q.Shared = slices.Clone(p.Shared)
+	for i := range q.Shared {
+		q.Shared[i].Direct = nil // stated per constant of two
+	}
+	opt.Bare = true
+	if r, err := Solve(q, opt); err == nil && r.Status == Converged {
+		o.Single, o.USingle = r.Full.PKa[0], math.Sqrt(r.Full.Cov[0])
+		o.Meaning += fmt.Sprintf(" One step at pKa %.3f (u %.3f) is the same set read as a single proton.", o.Single, o.USingle)
+	}
 }
 
 // profile minimises phi with the difference of the pair held, from c.now.

@@ -290,7 +290,7 @@ func (s *Solver) search(p *Problem, shared []Shared, opt Options, r *Result) {
 	if r.Status == Converged {
 		s.leaveOneOut(shared, opt, r)
 	}
-	s.doubt(opt, r)
+	s.doubt(p, opt, r)
 	if p.NonNegative && !c.fixed && r.Status == Converged {
 		s.constrain(p, shared, opt, r)
 	}
@@ -368,7 +368,7 @@ func (s *Solver) rms(p *Problem, opt Options, r *Result, e *Estimate, out []floa
 
 // doubt turns a formally converged fit into Undetermined where the data do not
 // fix the constants, and says why.
-func (s *Solver) doubt(opt Options, r *Result) {
+func (s *Solver) doubt(p *Problem, opt Options, r *Result) {
 	c := &s.c
 	if r.Status != Converged || c.fixed {
 		return
@@ -386,6 +386,7 @@ func (s *Solver) doubt(opt Options, r *Result) {
 	if n >= 2 && rank > n && r.Components < n+1 {
 		o := s.overlap(opt, &r.Full)
 		if o.High-o.Low > 0.3 || o.HighAny || o.LowAny {
+			o.describe(p, opt)
 			r.Status, r.Overlap = Undetermined, o
 			r.Notes = append(r.Notes, o.Meaning)
 		}
