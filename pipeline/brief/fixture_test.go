@@ -72,6 +72,12 @@ func oneSet(key string, rungs int, pka float64) Set {
 		s.AcidSD = append(s.AcidSD, 0.004+0.01*band(x, 560, 60, 1))
 		s.BaseSD = append(s.BaseSD, 0.006)
 	}
+	for j := 20; j < len(s.Acid); j++ { // the forms cross right of the acid band
+		if s.Acid[j] < s.Base[j] {
+			s.IsosbesticNM = s.WavelengthNM[j-1] + 4*(s.Acid[j-1]-s.Base[j-1])/(s.Acid[j-1]-s.Base[j-1]+s.Base[j]-s.Acid[j])
+			break
+		}
+	}
 	for i := range rungs {
 		ph := pka - 2 + 4*float64(i)/float64(max(1, rungs-1))
 		a := 1 / (1 + math.Pow(10, pka-ph))

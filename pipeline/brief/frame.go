@@ -40,7 +40,7 @@ func (s span) widened(share float64) span {
 // name of the vertical axis, below for those of the other.
 func newFrame(p *pen, x, y span) *frame {
 	left := 44.0
-	for _, t := range ticks(y.lo, y.hi, 5) {
+	for _, t := range ticks(y.lo, y.hi, 6) {
 		left = math.Max(left, 24+letters(t.label))
 	}
 	return &frame{pen: p, left: left, right: p.w - 10, top: 12, bottom: p.h - 36, x0: x.lo, x1: x.hi, y0: y.lo, y1: y.hi}
@@ -53,7 +53,7 @@ func (f *frame) at(x, y float64) point { return point{f.px(x), f.py(y)} }
 
 // rule draws the vertical axis: faint lines across, numbers, name.
 func (f *frame) rule(name string) {
-	for _, t := range ticks(f.y0, f.y1, 5) {
+	for _, t := range ticks(f.y0, f.y1, 6) {
 		y := f.py(t.at)
 		f.line("grid", f.left, y, f.right, y)
 		f.text("num", "end", f.left-5, y+3.5, t.label)

@@ -115,6 +115,6 @@ func good(verdict string) bool {
 func words() template.FuncMap {
 	return template.FuncMap{
 		"glyph": glyph, "tone": tone, "fixed": fixed, "signed": signed, "measured": measured, "known": known, "percent": percent,
-		"odds": func(p float64) template.HTML { return template.HTML(odds(p)) }, "when": when, "stamp": stamp, "sentence": sentence, "join": strings.Join, "share": bucketWords, "small": small, "capital": capital, "finding": finding, "answer": answer,
+		"odds": func(p float64) template.HTML { return template.HTML(odds(p)) }, "when": when, "stamp": stamp, "sentence": sentence, "join": strings.Join, "small": small, "capital": capital, "finding": finding, "answer": answer,
 	}
 }

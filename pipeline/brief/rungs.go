@@ -154,6 +154,9 @@ func budgetPicture(id string, s *Set) string {
 			about += ","
 		}
 		about += " " + c.name + " " + fixed(c.u, decimals(c.u))
+		if w := bucketWords(c.bucket); w != "" {
+			about += " (" + w + ")"
+		}
 	}
 	const row = 30
 	p := draw(id, "Uncertainty budget of "+s.Key, about+".", 360, float64(len(list))*row+44)
@@ -168,18 +171,11 @@ func budgetPicture(id string, s *Set) string {
 	f.line("axis", f.left, f.top, f.left, f.bottom)
 	for i, c := range list {
 		y := f.top + float64(i)*row
-		f.text("note halo", "start", f.left+4, y+11, short(bucketed(c), 54))
+		f.text("note halo", "start", f.left+4, y+11, short(c.name, 56))
 		f.rect("bar "+bucketClass(c.bucket), f.left, y+15, f.px(c.u)-f.left, 9)
 		f.text("num", "start", f.px(c.u)+4, y+23, fixed(c.u, decimals(c.u)))
 	}
 	return p.svg()
-}
-
-func bucketed(c bar) string {
-	if w := bucketWords(c.bucket); w != "" {
-		return c.name + " (" + w + ")"
-	}
-	return c.name
 }
 
 // bucketWords says with what a component is shared.

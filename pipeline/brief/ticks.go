@@ -24,11 +24,20 @@ func ticks(lo, hi float64, n int) []tick {
 	if span < 1e-12*math.Max(math.Abs(lo), math.Abs(hi)) || span < 1e-300 || span > 1e300 {
 		return nil
 	}
-	unit, power := roundStep(span / float64(n))
+	out := marks(lo, hi, span/float64(n))
+	if len(out) < 2 && n >= 4 {
+		out = marks(lo, hi, span/float64(2*n)) // a round step can leave one mark where several fit
+	}
+	return out
+}
+
+// marks lists the multiples of the round step at least as large as wanted.
+func marks(lo, hi, want float64) []tick {
+	unit, power := roundStep(want)
 	step := unit * math.Pow10(power)
 	first, last := math.Ceil(lo/step-1e-9), math.Floor(hi/step+1e-9)
 	var out []tick
-	for k := first; k <= last && len(out) <= n+1; k++ {
+	for k := first; k <= last && len(out) < 24; k++ {
 		v := k * unit
 		out = append(out, tick{k * step, tickLabel(v, power)})
 	}

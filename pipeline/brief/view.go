@@ -13,6 +13,7 @@ import (
 // Levels of detail, most first.
 const (
 	everything  = iota
+	spectraGo   // of sets that can go: no limit spectra, no budgets
 	plainGo     // no pictures of sets that can go
 	plainGoLook // pictures of the first sets to look at only
 	wordsOnly   // no pictures of sets, no tables of rungs
@@ -85,10 +86,10 @@ func viewOf(d *Data, level int) *view {
 	}
 	for i := range d.Look {
 		pictures := level < plainGoLook || level == plainGoLook && i < picturedLook
-		v.LookViews = append(v.LookViews, v.set(&d.Look[i], fmt.Sprintf("look-%d", i+1), pictures))
+		v.LookViews = append(v.LookViews, v.set(&d.Look[i], fmt.Sprintf("look-%d", i+1), pictures, false))
 	}
 	for i := range d.Go {
-		v.GoViews = append(v.GoViews, v.set(&d.Go[i], fmt.Sprintf("go-%d", i+1), level < plainGo))
+		v.GoViews = append(v.GoViews, v.set(&d.Go[i], fmt.Sprintf("go-%d", i+1), level < plainGo, true))
 		if d.Go[i].Verdict == "stands-noted" {
 			v.Noted++
 		}
@@ -97,6 +98,8 @@ func viewOf(d *Data, level int) *view {
 		v.ChartViews = append(v.ChartViews, v.chart(&d.Charts[i]))
 	}
 	switch level {
+	case spectraGo:
+		v.Thinned = "To keep this page small, sets that can go have no pictures of limit spectra and budgets here."
 	case plainGo:
 		v.Thinned = "To keep this page small, sets that can go have no pictures here."
 	case plainGoLook:
@@ -154,7 +157,8 @@ func (v *view) picture(f func(id string) string) template.HTML {
 	return template.HTML(f("p" + strconv.Itoa(v.pictures)))
 }
 
-func (v *view) set(s *Set, anchor string, pictures bool) setView {
+// set prepares one set; calm sets lose their second pictures first.
+func (v *view) set(s *Set, anchor string, pictures, calm bool) setView {
 	sv := setView{Set: *s, Anchor: anchor, Numbers: numbers(s), Conditions: conditions(s), Table: v.Level < wordsOnly && len(s.Rungs) > 0}
 	for _, n := range s.Notes {
 		if n != s.Headline && n != "" {
@@ -167,6 +171,9 @@ func (v *view) set(s *Set, anchor string, pictures bool) setView {
 	}
 	sv.Family = v.picture(func(id string) string { return familyPicture(id, s) })
 	sv.Residual = v.picture(func(id string) string { return residualPicture(id, s) })
+	if calm && v.Level >= spectraGo {
+		return sv
+	}
 	sv.Limits = v.picture(func(id string) string { return limitPicture(id, s) })
 	sv.Budget = v.picture(func(id string) string { return budgetPicture(id, s) })
 	return sv
