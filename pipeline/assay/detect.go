@@ -79,6 +79,7 @@ func (o *Outcome) furtherDye(prob fit.Problem) {
 		return
 	}
 	o.Hidden = h
+	o.Facts.Foreign = nil // one cause that explains all rungs counts before a foreign vial
 	o.Facts.SecondDyeShare, o.Facts.SecondDyePKa, o.Facts.SecondDyeLimit = h.Share, h.PKa, h.Limit
 }
 

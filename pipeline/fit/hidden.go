@@ -3,6 +3,7 @@ package fit
 import (
 	"fmt"
 	"math"
+	"slices"
 )
 
 // A Hidden is a second dye in the solution with a pKa of its own.
@@ -43,6 +44,12 @@ func SecondDye(p Problem, r *Result, opt Options) (*Hidden, error) {
 	}
 	q := p
 	q.Steps, q.Start = 2, nil
+	q.Shared = slices.Clone(p.Shared)
+	for i, e := range q.Shared {
+		if len(e.Direct) == 1 { // what acts on the one constant acts on both alike
+			q.Shared[i].Direct = []float64{e.Direct[0], e.Direct[0]}
+		}
+	}
 	opt.Bare = false
 	two, err := s.Solve(q, opt)
 	if err != nil {
