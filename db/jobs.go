@@ -170,3 +170,12 @@ func (s *Store) NightLines(ctx context.Context, night string) ([]string, error) 
 	}
 	return out, nil
 }
+
+// InputOf gives the input hash of a result.
+func (s *Store) InputOf(ctx context.Context, resultID int64) ([]byte, error) {
+	var sum []byte
+	if err := s.pool.QueryRow(ctx, `SELECT input_sha256 FROM pkvigil.result WHERE id = $1`, resultID).Scan(&sum); err != nil {
+		return nil, fmt.Errorf("input of result %d: %w", resultID, safe(err))
+	}
+	return sum, nil
+}
