@@ -31,7 +31,7 @@ func (s *Service) newWatcher() error {
 		}
 		roots = append(roots, watcher.Root{Name: f.Name, Path: abs, MarkerFile: f.MarkerFile, Settle: f.Settle, Ignore: f.Ignore})
 	}
-	s.watch = watcher.New(roots, watcher.Options{Known: s.knownFiles})
+	s.watch = watcher.New(roots, watcher.Options{Known: s.knownFiles, AskAgain: s.cfg.AskAgain})
 	return nil
 }
 

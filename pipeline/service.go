@@ -36,11 +36,12 @@ type Config struct {
 	Text      []byte // the settings file as read
 	Clock     Clock
 	Log       zerolog.Logger
-	Sweep     bool   // look at the folders and take files in
-	Work      bool   // compute sets and deliver messages
-	URL       string // database to use; "" takes what the settings say, or a private server
-	AnySchema bool   // do not refuse an older schema: for the command that migrates it
-	ReadOnly  bool   // no schema changes, no queue: for commands that only ask
+	Sweep     bool          // look at the folders and take files in
+	Work      bool          // compute sets and deliver messages
+	AskAgain  time.Duration // see watcher.Options; 0: its default
+	URL       string        // database to use; "" takes what the settings say, or a private server
+	AnySchema bool          // do not refuse an older schema: for the command that migrates it
+	ReadOnly  bool          // no schema changes, no queue: for commands that only ask
 }
 
 // A Service is the running program: it owns the watcher, the queue and the

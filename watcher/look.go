@@ -23,6 +23,9 @@ func New(roots []Root, opt Options) *Watcher {
 	if opt.MaxFiles <= 0 {
 		opt.MaxFiles = 1000
 	}
+	if opt.AskAgain <= 0 {
+		opt.AskAgain = askAgain
+	}
 	if opt.Answer <= 0 {
 		opt.Answer = 30 * time.Second
 	}

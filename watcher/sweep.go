@@ -229,7 +229,7 @@ func (r *root) listDir(ctx context.Context, rel string, depth int, l *listing, n
 		case name == r.MarkerFile:
 		case isLitter(d.Name(), r.Ignore):
 			l.litter++
-		case d.Type().IsRegular() && r.entries[name].resting(now):
+		case d.Type().IsRegular() && r.entries[name].resting(now, r.opt.AskAgain):
 			l.note(name, found{r.entries[name].stamp, false})
 		default:
 			l.add(name, d)
@@ -282,12 +282,12 @@ func (l *listing) note(name string, s found) {
 }
 
 // resting reports whether a file need not be asked for its size and time in this sweep.
-func (e *entry) resting(now time.Time) bool {
+func (e *entry) resting(now time.Time, trust time.Duration) bool {
 	if e == nil || !e.taken || e.calm == 0 {
 		return false
 	}
 	calm, asked := now.UnixNano()-e.calm, now.UnixNano()-e.asked
-	return calm >= int64(calmAfter) && asked >= 0 && asked < int64(askAgain)
+	return calm >= int64(calmAfter) && asked >= 0 && asked < int64(trust)
 }
 
 // compare brings the entries up to what the sweep saw.

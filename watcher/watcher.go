@@ -67,6 +67,10 @@ type Options struct {
 	// MaxFiles bounds the files of one Report; the rest comes with the next
 	// looks, newest first, roots taking turns. 0: 1000.
 	MaxFiles int
+	// AskAgain is how long the size and time of a file that was taken in and has
+	// stood unchanged for an hour are trusted before it is asked again; its name is
+	// looked for in every sweep. 0: 5 min.
+	AskAgain time.Duration
 	// Answer is how long a root may take to be looked at, in real time; then it
 	// counts as not answering and the others go on. 0: 30 s.
 	Answer time.Duration
