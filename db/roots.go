@@ -50,8 +50,47 @@ func notFound(err error) error {
 // ClaimRoot takes or renews the lease on a root until at+ttl. held is false
 // when another holder's lease runs; other says whose.
 func (s *Store) ClaimRoot(ctx context.Context, root string, h Holder, at time.Time, ttl time.Duration) (held bool, other Holder, err error) {
+	return claimRoot(ctx, s.pool, root, h, at, ttl)
+}
+
+// A Claim is what came of claiming one root.
+type Claim struct {
+	Held  bool
+	Other Holder // who holds it, when not Held
+}
+
+// ClaimRoots is ClaimRoot for several roots, in one transaction that does not
+// wait for the disk: a lease that a crash of the server takes back lapses all the sooner.
+func (s *Store) ClaimRoots(ctx context.Context, roots []string, h Holder, at time.Time, ttl time.Duration) (map[string]Claim, error) {
+	out := make(map[string]Claim, len(roots))
+	err := s.unhurried(ctx, func(tx pgx.Tx) error {
+		for _, r := range roots {
+			var c Claim
+			var err error
+			if c.Held, c.Other, err = claimRoot(ctx, tx, r, h, at, ttl); err != nil {
+				return err
+			}
+			out[r] = c
+		}
+		return nil
+	})
+	return out, err
+}
+
+// unhurried runs f in a transaction whose commit does not wait for the disk.
+// Only for what a crash may take back without harm.
+func (s *Store) unhurried(ctx context.Context, f func(pgx.Tx) error) error {
+	return s.InTx(ctx, func(tx pgx.Tx) error {
+		if _, err := tx.Exec(ctx, `set local synchronous_commit = off`); err != nil {
+			return err
+		}
+		return f(tx)
+	})
+}
+
+func claimRoot(ctx context.Context, q Querier, root string, h Holder, at time.Time, ttl time.Duration) (held bool, other Holder, err error) {
 	// Zero rows: the row belongs to somebody else whose lease has not lapsed.
-	tag, err := s.pool.Exec(ctx, `
+	tag, err := q.Exec(ctx, `
 		insert into root_lease as l (root, host, pid, program, since, until) values ($1, $2, $3, $4, $5, $6)
 		on conflict (root) do update set host = $2, pid = $3, program = $4, until = $6,
 			since = case when l.host = $2 and l.pid = $3 then l.since else $5 end
@@ -63,7 +102,7 @@ func (s *Store) ClaimRoot(ctx context.Context, root string, h Holder, at time.Ti
 	if tag.RowsAffected() == 1 {
 		return true, Holder{}, nil
 	}
-	err = s.pool.QueryRow(ctx, `select host, pid, program, since, until from root_lease where root = $1`, root).
+	err = q.QueryRow(ctx, `select host, pid, program, since, until from root_lease where root = $1`, root).
 		Scan(&other.Host, &other.PID, &other.Program, &other.Since, &other.Until)
 	if err != nil && !errors.Is(err, pgx.ErrNoRows) { // released in between: the next claim gets it
 		return false, Holder{}, fmt.Errorf("claiming root %s: %w", root, err)
@@ -82,7 +121,24 @@ func (s *Store) ReleaseRoots(ctx context.Context, h Holder) error {
 
 // PutRootState stores what the last look at a root found.
 func (s *Store) PutRootState(ctx context.Context, st RootState) error {
-	_, err := s.pool.Exec(ctx, `
+	return putRootState(ctx, s.pool, st)
+}
+
+// PutRootStates is PutRootState for several roots, in one transaction that
+// does not wait for the disk: the next look tells the same again.
+func (s *Store) PutRootStates(ctx context.Context, sts []RootState) error {
+	return s.unhurried(ctx, func(tx pgx.Tx) error {
+		for _, st := range sts {
+			if err := putRootState(ctx, tx, st); err != nil {
+				return err
+			}
+		}
+		return nil
+	})
+}
+
+func putRootState(ctx context.Context, q Querier, st RootState) error {
+	_, err := q.Exec(ctx, `
 		insert into root_state (root, instrument, visible, why, since, looked_at, newest_at, files, settling, litter, complete_up_to, clock_offset_s)
 		values ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12)
 		on conflict (root) do update set instrument = excluded.instrument, visible = excluded.visible, why = excluded.why, since = excluded.since,

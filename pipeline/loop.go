@@ -149,44 +149,52 @@ func (s *Service) handle(ctx context.Context, r watcher.Report) {
 
 // leased keeps the files of roots this process may sweep: one sweeper per root.
 func (s *Service) leased(ctx context.Context, r watcher.Report) []watcher.File {
-	may := map[string]bool{}
-	now := s.clock.Now()
+	var roots []string
 	for _, st := range r.States {
-		held, other, err := s.store.ClaimRoot(ctx, st.Root, s.holder(), now, leaseFor)
-		if won := err == nil && held; won && !s.holds[st.Root] {
-			s.watch.Recall(st.Root) // what another process took in meanwhile is known now
-			s.holds[st.Root] = true
-		} else if !won {
-			delete(s.holds, st.Root)
-		}
-		if err == nil && !held {
-			err = fmt.Errorf("process %d on %s sweeps it since %s; waiting for its lease", other.PID, other.Host, other.Since.Format(time.RFC3339))
-		}
-		if ctx.Err() == nil {
-			s.once.note(s.log, "sweeping folder "+st.Root, err)
-		}
-		may[st.Root] = err == nil
+		roots = append(roots, st.Root)
 	}
-	return slices.DeleteFunc(slices.Clone(r.Files), func(f watcher.File) bool { return !may[f.Root] })
+	claims, err := s.store.ClaimRoots(ctx, roots, s.holder(), s.clock.Now(), leaseFor)
+	if ctx.Err() != nil {
+		return nil
+	}
+	s.once.note(s.log, "claiming the folders", err)
+	for _, root := range roots {
+		c := claims[root]
+		var wait error
+		if err == nil && !c.Held {
+			wait = fmt.Errorf("process %d on %s sweeps it since %s; waiting for its lease", c.Other.PID, c.Other.Host, c.Other.Since.Format(time.RFC3339))
+		}
+		s.once.note(s.log, "sweeping folder "+root, wait)
+		switch {
+		case err == nil && c.Held && !s.holds[root]:
+			s.watch.Recall(root) // what another process took in meanwhile is known now
+			s.holds[root] = true
+		case err == nil && !c.Held:
+			delete(s.holds, root)
+		}
+	}
+	if err != nil {
+		// The database is away: taking in will say so itself, and take nothing.
+		return r.Files
+	}
+	return slices.DeleteFunc(slices.Clone(r.Files), func(f watcher.File) bool { return !s.holds[f.Root] })
 }
 
-// putStates records what the look saw of each root, and tells when a root is
-// blind or back.
+// putStates records what the look saw of each root.
 func (s *Service) putStates(ctx context.Context, r watcher.Report) error {
+	cfg := set(s)
+	rows := make([]db.RootState, 0, len(r.States))
 	for _, st := range r.States {
-		set, _, _ := s.current()
 		row := db.RootState{Root: st.Root, Visible: st.Visible, Why: st.Why, Since: st.Since, LookedAt: st.LookedAt, Newest: st.Newest, Files: st.Files, Settling: st.Settling, Litter: st.Litter}
-		if f := set.FolderByName(st.Root); f != nil {
+		if f := cfg.FolderByName(st.Root); f != nil {
 			row.Instrument, row.ClockOffset = f.Instrument, f.ClockAhead
 		}
 		if st.Visible && st.Settling == 0 && !r.More {
 			row.CompleteUpTo = st.LookedAt
 		}
-		if err := s.store.PutRootState(ctx, row); err != nil {
-			return err
-		}
+		rows = append(rows, row)
 	}
-	return nil
+	return s.store.PutRootStates(ctx, rows)
 }
 
 // Look is one sweep at the clock's time, for the replay and for once.
