@@ -96,4 +96,3 @@ func TestForeignAndRepeatedScan(t *testing.T) {
 		t.Errorf("repeated scan not named: %+v", s)
 	}
 }
-
