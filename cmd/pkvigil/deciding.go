@@ -255,17 +255,16 @@ reader   how a dashboard connects: role pkvigil_reader may read the schema reado
 					if err != nil {
 						return err
 					}
-					fmt.Fprintf(a.out, "schema %d -> %d\n", from, to)
+					return a.print(map[string]int{"from": from, "to": to}, func(out io.Writer) { fmt.Fprintf(out, "schema %d -> %d\n", from, to) })
 				case "reader":
-					fmt.Fprintln(a.out, s.ReaderHint())
+					return a.print(s.ReaderHint(), func(out io.Writer) { fmt.Fprintln(out, s.ReaderHint()) })
 				default:
 					v, err := s.Store().SchemaVersion(cmd.Context())
 					if err != nil {
 						return err
 					}
-					fmt.Fprintf(a.out, "schema version %d\n", v)
+					return a.print(v, func(out io.Writer) { fmt.Fprintf(out, "schema version %d\n", v) })
 				}
-				return nil
 			})
 		},
 	}

@@ -130,6 +130,7 @@ strong acids and bases, solvents and UV lamps asks for the usual protection.`,
 		c.GroupID = "keep"
 		root.AddCommand(c)
 	}
+	root.SetHelpCommand(a.help(root))
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return &usageError{err} })
 	return root
 }
@@ -149,6 +150,9 @@ func (a *app) read() (*settings.Settings, []byte, error) {
 	}
 	s, err := settings.Read(text, a.settings)
 	if err != nil {
+		return nil, nil, &usageError{err}
+	}
+	if err := knownChecks(s, text, a.settings); err != nil {
 		return nil, nil, &usageError{err}
 	}
 	return s, text, nil

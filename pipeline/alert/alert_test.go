@@ -171,7 +171,7 @@ func TestCompose(t *testing.T) {
 		t.Errorf("subject %q", m.Subject)
 	}
 	for _, part := range []string{
-		`pkvigil sign 7 --as NAME --because "..."`, "96 %: electrode drifted since its calibration (electrode E-31), +0.021 pH", "below 1 %: carry-over", "for: U2 did not move",
+		`pkvigil sign acknowledge 7 --as NAME --because "..."`, "96 %: electrode drifted since its calibration (electrode E-31), +0.021 pH", "below 1 %: carry-over", "for: U2 did not move",
 		"against: slope of RI-B", "offset and lag", "TB-2219 (thymol blue): pKa 8.900, shifted by about +0.039, at most 0.051, already released", "and 5 more",
 		"release of U1", "Next best check: calibrate again", "night shift", "brief-2026-03-14.html", "12 Mar to 15 Mar (90 %)", "14 Mar 4.7", "13 Mar -",
 	} {
@@ -179,7 +179,7 @@ func TestCompose(t *testing.T) {
 			t.Errorf("text lacks %q:\n%s", part, m.Text)
 		}
 	}
-	for _, part := range []string{"pkvigil sign 7 --as NAME", "<svg", "</svg>", "thymol blue", "and 5 more"} {
+	for _, part := range []string{"pkvigil sign acknowledge 7 --as NAME", "<svg", "</svg>", "thymol blue", "and 5 more"} {
 		if !strings.Contains(m.HTML, part) {
 			t.Errorf("html lacks %q:\n%s", part, m.HTML)
 		}
@@ -221,7 +221,7 @@ func TestDigest(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	for _, part := range []string{"2 further messages", "displaced by +0.60 nm", "(case 7)", "pkvigil sign 8", "Reason for this message: summary"} {
+	for _, part := range []string{"2 further messages", "displaced by +0.60 nm", "(case 7)", "pkvigil sign acknowledge 8", "Reason for this message: summary"} {
 		if !strings.Contains(m.Text, part) {
 			t.Errorf("lacks %q:\n%s", part, m.Text)
 		}

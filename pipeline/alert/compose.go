@@ -191,7 +191,7 @@ func (c Content) clean() Content {
 
 // AcknowledgeLine is the command that acknowledges a case.
 func AcknowledgeLine(id int64) string {
-	return fmt.Sprintf(`pkvigil sign %d --as NAME --because "..."`, id)
+	return fmt.Sprintf(`pkvigil sign acknowledge %d --as NAME --because "..."`, id)
 }
 
 // subject is one line in words a laboratory uses.

@@ -247,10 +247,11 @@ func (in *Input) limits() verdict.Limits {
 		}
 		out["calibration.age"] = l
 	}
-	for pass := range 2 { // general limits first, then those of the compound
+	for pass := range 2 { // general limits first, then those of the compound or instrument
 		for _, s := range in.Limits {
 			forAll := s.Compound == ""
-			if (pass == 0) != forAll || (!forAll && (in.Compound == nil || s.Compound != in.Compound.Name)) {
+			mine := s.Compound == in.Instrument.Name || (in.Compound != nil && s.Compound == in.Compound.Name)
+			if (pass == 0) != forAll || (!forAll && !mine) {
 				continue
 			}
 			l := out[s.Check]

@@ -117,6 +117,7 @@ func (j *judge) number(key string, v float64, unit, sentence, action string) {
 		lim = Defaults[key]
 	}
 	if lim.Off {
+		j.off(key)
 		return
 	}
 	c := Check{Key: key, Value: v, Unit: unit, Note: lim.Note, Hold: lim.Hold, Outcome: Stands}
@@ -137,9 +138,17 @@ func (j *judge) number(key string, v float64, unit, sentence, action string) {
 // finding records a check without a number.
 func (j *judge) finding(key string, o Outcome, sentence, action string) {
 	if lim, ok := j.limits[key]; ok && lim.Off {
+		j.off(key)
 		return
 	}
 	j.checks = append(j.checks, Check{Key: key, Note: Anything(), Hold: Anything(), Outcome: o, Sentence: sentence, Action: action})
+}
+
+// off records that a check was not made, once.
+func (j *judge) off(key string) {
+	if !slices.ContainsFunc(j.checks, func(c Check) bool { return c.Key == key }) {
+		j.checks = append(j.checks, Check{Key: key, Note: Anything(), Hold: Anything(), Outcome: Stands, Sentence: key + " is switched off in the settings: not checked."})
+	}
 }
 
 // report sorts the checks and derives verdict and actions.
