@@ -39,19 +39,15 @@ func TestChromium(t *testing.T) {
 	}
 	ctx, cancel := context.WithTimeout(context.Background(), 90*time.Second)
 	defer cancel()
-	run := func(args ...string) (string, string) {
-		t.Helper()
-		base := []string{"--headless", "--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run", "--disable-background-networking", "--disable-component-update", "--disable-sync",
-			"--hide-scrollbars", "--enable-logging=stderr", "--user-data-dir=" + t.TempDir()}
-		cmd := exec.CommandContext(ctx, browser, append(append(base, args...), "file://"+file)...)
-		var out, errs strings.Builder
-		cmd.Stdout, cmd.Stderr = &out, &errs
-		if err := cmd.Run(); err != nil {
-			t.Skipf("chromium does not run here: %v", err)
-		}
-		return out.String(), errs.String()
+	shot := filepath.Join(dir, "full-390.png")
+	cmd := exec.CommandContext(ctx, browser, "--headless", "--no-sandbox", "--disable-gpu", "--disable-quic", "--no-first-run", "--disable-background-networking", "--disable-component-update", "--disable-sync",
+		"--hide-scrollbars", "--enable-logging=stderr", "--user-data-dir="+t.TempDir(), "--window-size=390,2000", "--dump-dom", "--screenshot="+shot, "file://"+file)
+	var out, said strings.Builder
+	cmd.Stdout, cmd.Stderr = &out, &said
+	if err := cmd.Run(); err != nil {
+		t.Skipf("chromium does not run here: %v", err)
 	}
-	dom, errs := run("--dump-dom")
+	dom, errs := out.String(), said.String()
 	if strings.Contains(errs, ":CONSOLE") {
 		t.Errorf("the browser complained about the page:\n%s", errs)
 	}
@@ -61,8 +57,6 @@ func TestChromium(t *testing.T) {
 			t.Errorf("%s: the browser has %d, the page %d", tag, got, want)
 		}
 	}
-	shot := filepath.Join(dir, "full-390.png")
-	run("--window-size=390,2000", "--screenshot="+shot)
 	if info, err := os.Stat(shot); err != nil || info.Size() < 10_000 {
 		t.Errorf("screenshot at phone width: %v, %v", info, err)
 	}

@@ -246,11 +246,18 @@ func limitPicture(id string, s *Set) string {
 		return ""
 	}
 	y.take(0)
-	p := draw(id, "Limit spectra of "+s.Key, "Calculated spectra of "+names+", each with a band of plus and minus two standard deviations.", 360, 236)
+	about := "Calculated spectra of " + names
+	if s.Banded() {
+		about += ", each with a band of plus and minus two standard deviations"
+	}
+	p := draw(id, "Limit spectra of "+s.Key, about+".", 360, 236)
 	f := newFrame(p, flat(x), y.widened(0.06))
 	f.rule("absorbance, all in one form")
 	f.foot("wavelength / nm", ticks(f.x0, f.x1, 6))
 	for _, l := range list {
+		if !s.Banded() {
+			break
+		}
 		low, high := make([]float64, len(l.y)), make([]float64, len(l.y))
 		for j, v := range l.y {
 			d := 2 * deviation(l.sd, j)
@@ -274,6 +281,18 @@ func limitPicture(id string, s *Set) string {
 		}
 	}
 	return p.svg()
+}
+
+// Banded says whether the deviation of any limit spectrum is known.
+func (s *Set) Banded() bool {
+	return slices.ContainsFunc(limits(s), func(l limit) bool {
+		for i := range l.y {
+			if deviation(l.sd, i) > 0 {
+				return true
+			}
+		}
+		return false
+	})
 }
 
 func deviation(sd []float64, i int) float64 {

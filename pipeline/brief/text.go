@@ -30,7 +30,7 @@ func (d *Data) summary() string {
 // Lines says the most important things, one line each, for a mail.
 func (d *Data) Lines() []string {
 	var out []string
-	add := func(format string, a ...any) { out = append(out, fmt.Sprintf(format, a...)) }
+	add := func(format string, a ...any) { out = append(out, plain(fmt.Sprintf(format, a...))) }
 	for _, c := range d.Changes {
 		add("Changed: %s", c)
 	}
@@ -49,76 +49,154 @@ func (d *Data) Lines() []string {
 	return out
 }
 
+// plain makes one line of a text, without letters that would command a
+// terminal or hide others.
+func plain(s string) string { return string(harmless([]byte(strings.Join(strings.Fields(s), " ")))) }
+
 // Text is the brief for a terminal of 80 columns.
 func (d *Data) Text() string {
-	var b strings.Builder
-	p := func(format string, a ...any) { fmt.Fprintf(&b, format+"\n", a...) }
-	p("BRIEF of the night of %s, %s", d.Night, d.Laboratory)
-	p("%s", wrap(d.Headline()+".", 0))
-	section := func(title string, n int) {
-		if n > 0 {
-			p("\n%s", strings.ToUpper(title))
+	t := &teller{}
+	t.line(0, "BRIEF of the night of %s, %s", d.Night, d.Laboratory)
+	if d.Revision > 1 {
+		t.line(0, "Addendum %d to the first brief of this night.", d.Revision-1)
+	}
+	t.line(0, "%s.", capital(d.summary()))
+	t.head("Not seen", len(d.NotSeen))
+	for _, n := range d.NotSeen {
+		t.line(2, "%s", n.What)
+		t.todo(n.Action)
+	}
+	t.head("Is the system in control?", 1)
+	t.line(2, "%s", d.InControl.Sentence)
+	for _, r := range d.InControl.References {
+		if !good(r.Verdict) {
+			t.line(2, "%s: %s. %s", r.Label(), r.Verdict, r.Sentence)
 		}
 	}
-	section("Changed since the last brief of this night", len(d.Changes))
+	for _, f := range d.Forecasts {
+		t.line(2, "%s", sentence(f))
+	}
+	t.cases(d)
+	t.sets(d)
+	t.head("Signals without a case", len(d.Signals))
+	for _, s := range d.Signals {
+		t.line(2, "%s", s)
+	}
+	t.head("Files set aside", len(d.Files))
+	for _, f := range d.Files {
+		t.line(2, "%s: %s. %s", f.State, f.Path, sentence(f.Sentence))
+		t.todo(f.Remedy)
+	}
+	t.head("Changed since the last brief of this night", len(d.Changes))
 	for _, c := range d.Changes {
-		p("  %s", wrap(c, 2))
+		t.line(2, "%s", c)
 	}
-	section("Not seen", len(d.NotSeen))
-	for _, n := range d.NotSeen {
-		p("  %s", wrap(n.What, 2))
-		p("     -> %s", wrap(n.Action, 8))
+	if !d.CompleteUpTo.IsZero() {
+		t.line(0, "")
+		t.line(0, "Complete up to %s.", stamp(d.CompleteUpTo))
 	}
-	p("\nIS THE SYSTEM IN CONTROL?")
-	p("  %s", wrap(d.InControl.Sentence, 2))
-	section("Cases", len(d.Cases))
+	return string(harmless([]byte(t.b.String())))
+}
+
+// A teller writes lines for a terminal.
+type teller struct{ b strings.Builder }
+
+// line writes a paragraph, its later lines set in as deep as the first.
+func (t *teller) line(indent int, format string, a ...any) {
+	t.b.WriteString(strings.Repeat(" ", indent) + wrap(fmt.Sprintf(format, a...), indent) + "\n")
+}
+
+// todo writes what to do, if anything.
+func (t *teller) todo(s string) {
+	if s != "" {
+		t.b.WriteString("     -> " + wrap(s, 8) + "\n")
+	}
+}
+
+// head begins a part that has something in it.
+func (t *teller) head(title string, n int) {
+	if n > 0 {
+		t.b.WriteString("\n" + strings.ToUpper(title) + "\n")
+	}
+}
+
+// causesTold is how many causes of a case the terminal names.
+const causesTold = 3
+
+func (t *teller) cases(d *Data) {
+	t.head("Cases", len(d.Cases))
 	for _, c := range d.Cases {
-		p("  case %d, %s: %s", c.ID, c.State, wrap(c.Sentence, 4))
+		t.line(2, "case %d, %s: %s", c.ID, c.State, c.Sentence)
+		if c.Since != "" {
+			t.line(5, "began %s", c.Since)
+		}
 		for i, k := range c.Candidates {
-			if i < 3 {
-				p("     %3.0f %%  %s, %s", 100*k.Probability, k.Title, k.Resource)
+			if i < causesTold {
+				t.line(5, "%s  %s, %s", percent(k.Probability), k.Title, k.Resource)
 			}
 		}
 		if c.NextCheck != "" {
-			p("     next: %s", wrap(c.NextCheck, 11))
+			t.line(5, "next: %s", c.NextCheck)
 		}
 		if n := len(c.Results); n > 0 {
-			p("     touches %d result(s); pkvigil reach %d", n, c.ID)
+			t.line(5, "touches %d result(s); pkvigil reach %d", n, c.ID)
 		}
 	}
-	section("Look at these first", len(d.Look))
-	for _, s := range d.Look {
-		p("  %-34s %-11s %s", s.Key, s.Verdict, s.number())
-		p("     %s", wrap(s.Headline, 5))
-		for _, a := range s.Actions {
-			p("     -> %s", wrap(a, 8))
-		}
-	}
-	section("Can go", len(d.Go))
-	for _, s := range d.Go {
-		p("  %-34s %-12s %s", s.Key, s.Verdict, s.number())
-	}
-	section("Did not happen", len(d.Waiting))
-	for _, w := range d.Waiting {
-		p("  %-34s waits for %s", w.Key, strings.Join(w.Missing, ", "))
-	}
-	section("Files set aside", len(d.Files))
-	for _, f := range d.Files {
-		p("  %-8s %s", f.State, wrap(f.Sentence, 11))
-	}
-	return b.String()
 }
 
-// number is the first constant with its expanded uncertainty.
+// row writes a key, a verdict and what is said of it in columns, or what is
+// said below where it does not fit.
+func (t *teller) row(key, verdict, said string) {
+	l := fmt.Sprintf("  %-34s", plain(key))
+	if verdict != "" {
+		l += fmt.Sprintf(" %-12s", plain(verdict))
+	}
+	said = plain(said)
+	if len([]rune(l))+1+len([]rune(said)) <= 80 {
+		t.b.WriteString(l + " " + said + "\n")
+		return
+	}
+	t.b.WriteString(strings.TrimRight(l, " ") + "\n")
+	t.line(5, "%s", said)
+}
+
+func (t *teller) sets(d *Data) {
+	t.head("Look at these first", len(d.Look))
+	for _, s := range d.Look {
+		t.row(s.Key, s.Verdict, s.number())
+		t.line(5, "%s", s.Headline)
+		if s.InQuestionWhy != "" {
+			t.line(5, "in question: %s", s.InQuestionWhy)
+		}
+		for _, a := range s.Actions {
+			t.todo(a)
+		}
+	}
+	t.head("Can go", len(d.Go))
+	for _, s := range d.Go {
+		t.row(s.Key, s.Verdict, s.number())
+		for _, n := range s.Notes {
+			t.line(5, "%s", n)
+		}
+	}
+	t.head("Did not happen", len(d.Waiting))
+	for _, w := range d.Waiting {
+		t.row(w.Key, "", "waits for "+strings.Join(w.Missing, ", "))
+	}
+}
+
+// number is the constants of a set with their expanded uncertainty.
 func (s *Set) number() string {
-	if len(s.Constants) == 0 {
+	var parts []string
+	k := ""
+	for _, n := range numbers(s) {
+		parts = append(parts, n.Value)
+		k = n.K
+	}
+	if len(parts) == 0 {
 		return "no number"
 	}
-	var parts []string
-	for _, c := range s.Constants {
-		parts = append(parts, fmt.Sprintf("%.3f ± %.3f", c.PKa, c.U))
-	}
-	return "pKa " + strings.Join(parts, ", ") + " (k = 2)"
+	return "pKa " + strings.Join(parts, ", ") + " (k = " + k + ")"
 }
 
 // wrap breaks text at 78 columns, later lines indented.
