@@ -121,16 +121,29 @@ func controlPicture(id string, c *Chart) string {
 	return p.svg()
 }
 
-// axis names the vertical axis: the unit, or what is charted where that is a
-// bare number.
+// unit is the unit as written after a number: a pKa is a bare number, though
+// it is counted in units of pH.
+func (c *Chart) unit() string {
+	if c.Unit == "1" || c.Unit == "pH" && strings.HasSuffix(c.Title, "pKa") {
+		return ""
+	}
+	return c.Unit
+}
+
+// axis names the vertical axis: what is charted and its unit, as far as there
+// is room.
 func (c *Chart) axis() string {
-	if c.Unit != "" && c.Unit != "1" {
-		return c.Unit
+	_, name, _ := strings.Cut(c.Title, ": ")
+	switch u := c.unit(); {
+	case name == "" && u == "":
+		return "value"
+	case u == "":
+		return short(name, 30)
+	case name == "" || len([]rune(name+u)) > 27:
+		return u
+	default:
+		return name + " / " + u
 	}
-	if _, name, ok := strings.Cut(c.Title, ": "); ok {
-		return short(name, 26)
-	}
-	return "value"
 }
 
 // number writes a value with the decimals that the limits of its chart call for.

@@ -44,7 +44,9 @@ func fullNight() Data {
 		s.Notes = []string{s.Headline, "Solutions reach only 0.86 of the base form."}
 		d.Look = append(d.Look, s)
 	}
-	d.Look = append(d.Look, Set{Key: "U2/2026-09-14/XX-1", Compound: "XX", Instrument: "U2", Verdict: "no number", Headline: "No spectrum could be used", TemperatureC: math.NaN(), Ionic: math.NaN(), IsosbesticNM: math.NaN()})
+	question := oneSet("U1/2026-09-14/BCG-1020", 12, 4.694)
+	question.Verdict, question.ResultID = "in-question", 88
+	d.Look = append(d.Look, question, Set{Key: "U2/2026-09-14/XX-1", Compound: "XX", Instrument: "U2", Verdict: "no number", Headline: "No spectrum could be used", TemperatureC: math.NaN(), Ionic: math.NaN(), IsosbesticNM: math.NaN()})
 	for i := range 8 {
 		s := oneSet(fmt.Sprintf("U1/2026-09-14/CR-%d", 1040+i), 12, 8.2)
 		if i == 2 {
@@ -93,7 +95,7 @@ func oneSet(key string, rungs int, pka float64) Set {
 }
 
 func driftingChart() Chart {
-	c := Chart{Title: "RI-A on U1: pKa", Unit: "", Centre: 4.658, Low: 4.638, High: 4.678, Assigned: 4.66, OnsetLow: "2026-09-06", OnsetHigh: "2026-09-09"}
+	c := Chart{Title: "RI-A on U1: pKa", Unit: "pH", Centre: 4.658, Low: 4.638, High: 4.678, Assigned: 4.66, OnsetLow: "2026-09-06", OnsetHigh: "2026-09-09"}
 	ewma := c.Centre
 	for i := range 60 {
 		t := time.Date(2026, 7, 17, 0, 0, 0, 0, time.UTC).AddDate(0, 0, i)

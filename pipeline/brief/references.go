@@ -1,5 +1,12 @@
 package brief
 
+import "slices"
+
+// Centred says whether any reference has a centre of its chart.
+func (c Control) Centred() bool {
+	return slices.ContainsFunc(c.References, func(r Reference) bool { return known(r.Centre) })
+}
+
 // A row is one row of the picture of tonight's references.
 type row struct {
 	name   string

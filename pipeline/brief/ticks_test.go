@@ -110,6 +110,11 @@ func TestNumbers(t *testing.T) {
 	if got := fixed(-0.0001, 3); got != "0.000" {
 		t.Errorf("negative zero: %q", got)
 	}
+	for in, want := range map[string]string{"pH readings wrong": "pH readings wrong.", "line 3: found": "Line 3: found.", "n023/a.csv is": "n023/a.csv is.", "": "", "Done!": "Done!"} {
+		if got := sentence(in); got != want {
+			t.Errorf("sentence(%q) = %q, want %q", in, got, want)
+		}
+	}
 	for p, want := range map[float64]string{0: "0 %", 0.004: "< 1 %", 0.93: "93 %", 0.999: "> 99 %", 1: "100 %"} {
 		if got := percent(p); got != want {
 			t.Errorf("percent(%g) = %q, want %q", p, got, want)

@@ -8,6 +8,8 @@ import (
 	"strconv"
 	"strings"
 	"time"
+	"unicode"
+	"unicode/utf8"
 )
 
 // Levels of detail, most first.
@@ -60,6 +62,7 @@ type setView struct {
 	Family, Residual, Limits, Budget template.HTML
 	Table                            bool
 	Thermo, Beside                   []string
+	Touched                          []string // what cases do to it
 }
 
 // A number is one constant ready to be read.
@@ -166,6 +169,7 @@ func (v *view) set(s *Set, anchor string, pictures, calm bool) setView {
 		}
 	}
 	sv.Thermo, sv.Beside = besides(s)
+	sv.Touched = touchedBy(v.Cases, s)
 	if !pictures {
 		return sv
 	}
@@ -181,7 +185,28 @@ func (v *view) set(s *Set, anchor string, pictures, calm bool) setView {
 
 // More says whether there is anything to open beneath a set.
 func (s setView) More() bool {
-	return len(s.Reasons)+len(s.Thermo)+len(s.Beside)+len(s.Lot)+len(s.Limits)+len(s.Budget) > 0 || s.Table
+	return len(s.Reasons)+len(s.Thermo)+len(s.Beside)+len(s.Touched)+len(s.Lot)+len(s.Limits)+len(s.Budget) > 0 || s.Table
+}
+
+// touchedBy says which open cases reach a result, and how far.
+func touchedBy(cases []Case, s *Set) []string {
+	var out []string
+	for _, c := range cases {
+		for _, t := range c.Results {
+			if c.State == "closed" || t.ResultID != s.ResultID || t.Set != s.Key {
+				continue
+			}
+			line := fmt.Sprintf("Case %d touches it", c.ID)
+			if known(t.Impact) {
+				line += ": estimated effect on pKa " + signed(t.Impact, 3)
+				if known(t.Bound) {
+					line += ", at most " + fixed(t.Bound, 3)
+				}
+			}
+			out = append(out, line+".")
+		}
+	}
+	return out
 }
 
 // numbers states the constants of a set.
@@ -249,7 +274,7 @@ func (v *view) chart(c *Chart) chartView {
 	cv.Picture = v.picture(func(id string) string { return controlPicture(id, c) })
 	for i := min(len(c.Values), len(c.Nights)) - 1; i >= 0; i-- {
 		if known(c.Values[i]) {
-			cv.Last = c.Nights[i] + ": " + strings.TrimSpace(c.number(c.Values[i])+" "+c.Unit)
+			cv.Last = c.Nights[i] + ": " + strings.TrimSpace(c.number(c.Values[i])+" "+c.unit())
 			break
 		}
 	}
@@ -359,13 +384,20 @@ func stamp(t time.Time) string {
 // when is a time as machines read it.
 func when(t time.Time) string { return t.Format(time.RFC3339) }
 
-// capital makes the first letter large.
+// capital makes the first letter large where the first word is a plain one;
+// pH, pKa and names of files keep their writing.
 func capital(s string) string {
-	r := []rune(s)
-	if len(r) == 0 {
+	word, _, _ := strings.Cut(s, " ")
+	if word == "" {
 		return s
 	}
-	return strings.ToUpper(string(r[:1])) + string(r[1:])
+	for _, r := range strings.TrimRight(word, ",;:.") {
+		if !unicode.IsLower(r) {
+			return s
+		}
+	}
+	r, n := utf8.DecodeRuneInString(s)
+	return string(unicode.ToUpper(r)) + s[n:]
 }
 
 // sentence ends a text with a stop if it has none.
