@@ -179,3 +179,13 @@ func (s *Store) InputOf(ctx context.Context, resultID int64) ([]byte, error) {
 	}
 	return sum, nil
 }
+
+// PointsStored counts the chart points, whatever became of their results, and
+// the results that lost their standing: when both are as before, no chart can look different.
+func (s *Store) PointsStored(ctx context.Context, q Querier) (points, replaced int, err error) {
+	err = s.on(q).QueryRow(ctx, `SELECT (SELECT count(*) FROM pkvigil.point), (SELECT count(*) FROM pkvigil.standing WHERE NOT current OR struck)`).Scan(&points, &replaced)
+	if err != nil {
+		return 0, 0, fmt.Errorf("counting chart points: %w", safe(err))
+	}
+	return points, replaced, nil
+}

@@ -31,8 +31,9 @@ const markEvaluated = "evaluated"
 
 // An evaluated mark says what the last evaluation saw.
 type evaluated struct {
-	Points int    `json:"points"`
-	Night  string `json:"night"`
+	Points   int    `json:"points"`
+	Replaced int    `json:"replaced"`
+	Night    string `json:"night"`
 }
 
 // evaluate asks, when reference results or calibrations are new, whether the
@@ -40,25 +41,27 @@ type evaluated struct {
 // set is being computed, so that it sees the references of the moment
 // together. Everything it decides is stored in one transaction.
 func (s *Service) evaluate(ctx context.Context, now time.Time) error {
-	ts, err := s.tracks(ctx, nil, now)
+	points, replaced, err := s.store.PointsStored(ctx, nil)
 	if err != nil {
 		return err
-	}
-	n, night := 0, ""
-	for _, t := range ts {
-		for _, p := range t.points {
-			n += len(p)
-		}
-		if len(t.nights) > 0 {
-			night = max(night, t.nights[len(t.nights)-1])
-		}
 	}
 	var last evaluated
 	if _, err := s.store.Watermark(ctx, nil, markEvaluated, &last); err != nil {
 		return err
 	}
-	if n == last.Points || n == 0 {
+	if points == 0 || points == last.Points && replaced == last.Replaced {
 		return nil
+	}
+	ts, err := s.tracks(ctx, nil, now)
+	if err != nil {
+		return err
+	}
+	night := ""
+	for _, t := range ts {
+		night = max(night, t.nights[len(t.nights)-1])
+	}
+	if night == "" {
+		return nil // points of the future: a clock is wrong
 	}
 	scene, err := s.scene(ctx, ts, night, now)
 	if err != nil {
@@ -72,7 +75,7 @@ func (s *Service) evaluate(ctx context.Context, now time.Time) error {
 		if err := s.judgeSystem(ctx, tx, scene, signals, now); err != nil {
 			return err
 		}
-		return s.store.PutWatermark(ctx, tx, markEvaluated, evaluated{Points: n, Night: night}, now)
+		return s.store.PutWatermark(ctx, tx, markEvaluated, evaluated{Points: points, Replaced: replaced, Night: night}, now)
 	})
 }
 
