@@ -4,6 +4,7 @@ import (
 	"context"
 	"errors"
 	"fmt"
+	"maps"
 	"slices"
 	"strings"
 
@@ -97,4 +98,40 @@ func (s *Service) aside(ctx context.Context, q db.Querier, name string) (*db.Fil
 		names = append(names, f.Root+"/"+f.Path)
 	}
 	return nil, fmt.Errorf("%q fits several files; say which: %s", name, strings.Join(names, ", "))
+}
+
+// knownSets lists the sets that a file with a mistyped name may belong to: the
+// open ones, and those that the other files of the batch belong to.
+func (s *Service) knownSets(ctx context.Context, tx pgx.Tx, batch []*item) ([]naming.KnownSet, error) {
+	open, err := s.store.OpenSets(ctx, tx)
+	if err != nil {
+		return nil, err
+	}
+	at := map[string]int{}
+	known := []naming.KnownSet{}
+	of := func(name string) *naming.KnownSet {
+		i, ok := at[name]
+		if !ok {
+			i = len(known)
+			at[name], known = i, append(known, naming.KnownSet{Set: name})
+		}
+		return &known[i]
+	}
+	for _, o := range open {
+		k := of(o.Name)
+		k.Rungs = append(k.Rungs, o.Rungs...)
+		k.Roles = slices.AppendSeq(k.Roles, maps.Keys(o.Roles))
+	}
+	for _, it := range batch {
+		if it.matchErr != nil || it.match.Set == "" || it.match.Copy {
+			continue
+		}
+		k := of(it.match.Set)
+		if it.match.Role == naming.RoleScan {
+			k.Rungs = append(k.Rungs, it.match.Rung)
+		} else {
+			k.Roles = append(k.Roles, it.match.Role)
+		}
+	}
+	return known, nil
 }

@@ -61,7 +61,6 @@ type Service struct {
 	rules      *naming.Rules
 
 	watch        *watcher.Watcher
-	knownSets    []naming.KnownSet // sets a parked file might belong to; owned by the take-in
 	once         onChange
 	holds        map[string]bool // roots whose lease this process has; owned by the sweep
 	serverConfig cluster.Config

@@ -225,6 +225,7 @@ func (s *Service) decide(ctx context.Context, tx pgx.Tx, items []*item, now time
 	}
 	inBatch := map[[32]byte]*item{}
 	var todo []*item
+	var known []naming.KnownSet
 	// An original counts before its copy, whatever order they were found in.
 	slices.SortStableFunc(items, func(a, b *item) int { return copyRank(a) - copyRank(b) })
 	for _, it := range items {
@@ -235,14 +236,14 @@ func (s *Service) decide(ctx context.Context, tx pgx.Tx, items []*item, now time
 			}
 			continue
 		}
-		last := byPath[it.file.Root][it.file.Path]
+		last := byPath[it.file.Root][db.PathKey(it.file.Path)]
 		if last != nil && last.SHA256 == it.sum {
 			it.touched = true
 			got.Touched++
 			continue
 		}
 		row := s.row(it, now)
-		s.judgeFile(it, row, byHash[it.sum], inBatch[it.sum], last)
+		s.judgeFile(it, row, byHash[it.sum], inBatch[it.sum])
 		if row.File.State == db.FileTaken {
 			if inBatch[it.sum] == nil {
 				inBatch[it.sum] = it
@@ -252,6 +253,14 @@ func (s *Service) decide(ctx context.Context, tx pgx.Tx, items []*item, now time
 			}
 		} else {
 			row.Content = nil
+		}
+		if row.File.State == db.FileParked {
+			if known == nil {
+				if known, err = s.knownSets(ctx, tx, items); err != nil {
+					return nil, err
+				}
+			}
+			s.suggest(it, &row.File, known)
 		}
 		it.taken = row
 		todo = append(todo, it)
@@ -330,11 +339,13 @@ func (s *Service) instrumentsOf(e parse.Event) []string {
 }
 
 // judgeFile decides between taken, twin, parked and refused.
-func (s *Service) judgeFile(it *item, row *db.Taken, known *db.File, sibling *item, last *db.File) {
+func (s *Service) judgeFile(it *item, row *db.Taken, known *db.File, sibling *item) {
 	var twinOf *int64
 	var twin *naming.Match
 	var twinPath string
 	switch {
+	case known != nil && known.Root == row.File.Root && known.Path == db.PathKey(row.File.Path):
+		// The bytes of an earlier revision of the same file are back: what stands in the folder counts.
 	case known != nil:
 		twinOf, twin, twinPath = &known.ID, known.Match, known.Root+"/"+known.Path
 	case sibling != nil:
@@ -350,7 +361,6 @@ func (s *Service) judgeFile(it *item, row *db.Taken, known *db.File, sibling *it
 		f.Reason = &db.Reason{Sentence: fmt.Sprintf("%s is byte-identical to %s; counted once.", it.file.Path, twinPath)}
 	case it.matchErr != nil:
 		f.State = db.FileParked
-		s.suggest(it, f)
 	case it.match.Role == naming.RoleIgnore:
 		f.State = db.FileTaken
 		f.Format = "ignored by rule"
@@ -364,7 +374,6 @@ func (s *Service) judgeFile(it *item, row *db.Taken, known *db.File, sibling *it
 	default:
 		f.State = db.FileTaken
 	}
-	_ = last
 }
 
 // copyRank orders originals before copies and names that no rule knows.
@@ -403,10 +412,10 @@ func sentence(s string) string {
 }
 
 // suggest names the nearest rule and set for a parked file.
-func (s *Service) suggest(it *item, f *db.File) {
+func (s *Service) suggest(it *item, f *db.File, known []naming.KnownSet) {
 	f.Reason = &db.Reason{Sentence: sentence(it.matchErr.Error())}
 	_, rules, _ := s.current()
-	g := naming.Nearest(it.file.Root, it.file.Path, rules, s.knownSets)
+	g := naming.Nearest(it.file.Root, it.file.Path, rules, known)
 	f.NearestRule, f.NearestSet, f.Distance = g.Rule, g.Set, g.Distance
 	if g.Sentence != "" {
 		f.Reason.Remedy = g.Sentence
