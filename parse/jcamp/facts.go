@@ -194,7 +194,7 @@ func (m *maker) moment(b *Block) (time.Time, bool) {
 var (
 	ymd    = regexp.MustCompile(`^(\d{2,4})[-/.](\d{1,2})[-/.](\d{1,2})$`)
 	other  = regexp.MustCompile(`^(\d{1,2})[-/.](\d{1,2})[-/.](\d{4}|\d{2})$`)
-	clock  = regexp.MustCompile(`\b(\d{1,2}:\d{2}(?::\d{2}(?:\.\d+)?)?)(\s*[AaPp][Mm]\b)?`)
+	clock  = regexp.MustCompile(`(\d{1,2}:\d{2}(?::\d{2}(?:\.\d+)?)?)(\s*[AaPp][Mm]\b)?`)
 	offset = regexp.MustCompile(`(?:\(?(?:GMT|UTC)?\s*([-+])(\d{2}):?(\d{2})\)?|(Z|GMT|UTC))$`)
 )
 

@@ -116,7 +116,7 @@ func (m *maker) block(b *Block) error {
 // spectrum. The wording was never standardised.
 func ultravioletVisible(s string) bool {
 	s = strings.ToUpper(s)
-	for _, w := range [...]string{"SPECTRUM", "SPECTRA", "SPECTROSCOPY", "ABSORPTION", "ABSORBANCE", "ELECTRONIC"} {
+	for _, w := range [...]string{"SPECTRUM", "SPECTRA", "SPECTROSCOPY", "ABSORPTION", "ABSORBANCE"} {
 		s = strings.ReplaceAll(s, w, "")
 	}
 	s = strings.Map(func(r rune) rune {
@@ -126,7 +126,7 @@ func ultravioletVisible(s string) bool {
 		return r
 	}, s)
 	switch s {
-	case "UV", "VIS", "UVVIS", "UVVISIBLE", "VISIBLE", "ULTRAVIOLET", "ULTRAVIOLETVISIBLE", "ULTRAVIOLETVIS", "ULTRAVIOLETANDVISIBLE",
+	case "UV", "VIS", "UVVIS", "UVVISIBLE", "VISIBLE", "ULTRAVIOLET", "ULTRAVIOLETVISIBLE", "ULTRAVIOLETVIS", "ULTRAVIOLETANDVISIBLE", "ELECTRONIC",
 		"UVVISNIR", "UVVISIBLENIR", "UVNIR", "VISNIR", "VISIBLENIR":
 		return true
 	}

@@ -125,7 +125,7 @@ func (d *decoder) structure() error {
 			return err
 		}
 	}
-	d.eof = line
+	d.eof = 1 + bytes.Count(bytes.TrimRight(d.text, "\n"), []byte{'\n'})
 	return nil
 }
 

@@ -94,7 +94,7 @@ func (d *decoder) counted(t *Table, f frame, r record) error {
 	case n == 0:
 		return d.fail(r.line, t.Kind, "an empty table", "data on the lines below", "export the file again")
 	case f.n >= 0 && n != f.n:
-		end := r.line + bytes.Count(bytes.TrimRight(r.body, "\n"), []byte{'\n'})
+		end := r.line + 1 + bytes.Count(bytes.TrimRight(r.body, "\n"), []byte{'\n'})
 		return d.fail(end, t.Kind, fmt.Sprintf("%d points", n), fmt.Sprintf("%d as the header says", f.n), "the table is cut or damaged; export the file again")
 	case f.n < 0:
 		t.note(r.line, "no NPOINTS: the count of %d cannot be checked", n)
@@ -253,6 +253,9 @@ func (d *decoder) frame(b *Block, t *Table, l *list) (frame, error) {
 
 // headNumber reads the one number of a record.
 func (d *decoder) headNumber(b *Block, key string, point byte) (float64, error) {
+	if key == "NPOINTS" { // some write 6.000, whatever the decimal sign elsewhere
+		point = '.'
+	}
 	v, _, ok := parse.Float([]byte(b.get(key)), point)
 	if !ok {
 		return 0, d.fail(b.at(key), key, parse.Show(b.get(key)), "one number", "correct the header")
