@@ -609,13 +609,52 @@ func (s *Service) keepCase(ctx context.Context, tx pgx.Tx, sc *scene, ev drift.E
 	if err != nil {
 		return err
 	}
-	for _, t := range changes {
-		key := fmt.Sprintf("case|%s|%s|%s", row.Key, sc.night, t.Change)
-		if err := s.tell(ctx, tx, key, caseContent(set(s), row, c, t, harms, now), &row.ID); err != nil {
-			return err
-		}
+	return s.sayCase(ctx, tx, sc.night, row, c, changes, harms, now)
+}
+
+// betweenMails is the least pause between two messages about one case that
+// neither open, close nor escalate it.
+const betweenMails = 12 * time.Hour
+
+// sayCase speaks of what changed in a case since anything was last said of
+// it; what may not be said yet is kept and said later.
+func (s *Service) sayCase(ctx context.Context, tx pgx.Tx, night string, row *db.Case, c *drift.Case, changes []drift.Transition, harms []harm, now time.Time) error {
+	mark := "unsaid|" + row.Key
+	var unsaid []drift.Transition
+	if _, err := s.store.Watermark(ctx, tx, mark, &unsaid); err != nil {
+		return err
 	}
-	return nil
+	had := len(unsaid)
+	unsaid = append(unsaid, changes...)
+	if len(unsaid) == 0 {
+		return nil
+	}
+	state := alert.State{Kind: alert.DriftCase, Key: row.Key, Presence: alert.Present, Acknowledged: c.State == drift.Acknowledged}
+	for _, t := range unsaid {
+		state.Changes = append(state.Changes, whyOf(t.Change))
+	}
+	var last alert.Said
+	said, err := s.store.LastSaid(ctx, tx, row.ID)
+	if err != nil {
+		return err
+	}
+	if said != nil {
+		last = alert.Said{Why: alert.Why(said.Reason), At: said.At}
+	}
+	why, speak := alert.Decide(state, last, nil, now)
+	urgent := why == alert.WhyOpened || why == alert.WhyClosed || why == alert.WhyEscalated
+	if !speak || !urgent && now.Sub(last.At) < betweenMails {
+		if len(unsaid) == had {
+			return nil
+		}
+		return s.store.PutWatermark(ctx, tx, mark, unsaid, now)
+	}
+	content := caseContent(set(s), row, c, unsaid, harms, now)
+	content.Why = why
+	if err := s.tell(ctx, tx, fmt.Sprintf("case|%s|%s|%s", row.Key, night, why), content, &row.ID); err != nil {
+		return err
+	}
+	return s.store.PutWatermark(ctx, tx, mark, []drift.Transition{}, now)
 }
 
 func set(s *Service) *settings.Settings { v, _, _ := s.current(); return v }

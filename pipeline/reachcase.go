@@ -199,12 +199,14 @@ func (s *Service) resultRecord(ctx context.Context, tx pgx.Tx, id int64) (stored
 }
 
 // caseContent is what a message about a case may say.
-func caseContent(cfg *settings.Settings, row *db.Case, c *drift.Case, t drift.Transition, harms []harm, now time.Time) alert.Content {
+func caseContent(cfg *settings.Settings, row *db.Case, c *drift.Case, changes []drift.Transition, harms []harm, now time.Time) alert.Content {
 	e := c.Explanation
-	m := alert.Content{Kind: alert.DriftCase, Key: row.Key, CaseID: row.ID, Why: whyOf(t.Change), At: now, Instruments: c.Instruments,
+	m := alert.Content{Kind: alert.DriftCase, Key: row.Key, CaseID: row.ID, At: now, Instruments: c.Instruments,
 		Sentence: e.Sentence, Finding: string(e.Finding), Alike: e.Alike, NextCheck: row.NextCheck, ResultsAll: len(harms)}
-	if t.Text != "" {
-		m.Notes = append(m.Notes, t.Text)
+	for _, t := range changes {
+		if t.Text != "" {
+			m.Notes = append(m.Notes, t.Text)
+		}
 	}
 	if len(e.Candidates) > 0 {
 		w := e.Candidates[0]
