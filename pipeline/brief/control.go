@@ -25,50 +25,65 @@ func nightPlaces(nights []string) (at []float64, dates bool) {
 	return at, true
 }
 
-// flagLetters gives every different flag of a chart a letter, in order.
-func flagLetters(c *Chart) (letter map[string]string, order []string) {
-	letter = map[string]string{}
-	for i := range min(len(c.Flags), len(c.Nights)) {
-		s := c.Flags[i]
-		if s == "" || letter[s] != "" {
-			continue
-		}
-		order = append(order, s)
-		if n := len(order); n <= 26 {
-			letter[s] = string(rune('a' + n - 1))
-		} else {
-			letter[s] = fmt.Sprint(n)
-		}
-	}
-	return letter, order
-}
-
-// A flagged is one line of the key below a control chart.
-type flagged struct{ Letter, Words, Nights string }
-
-// flagKey lists the flags of a chart with their letters and nights.
-func flagKey(c *Chart) []flagged {
-	letter, order := flagLetters(c)
-	var out []flagged
-	for _, s := range order {
-		first, last, n := "", "", 0
-		for i := range min(len(c.Flags), len(c.Nights)) {
-			if c.Flags[i] == s {
-				if n == 0 {
-					first = c.Nights[i]
-				}
-				last, n = c.Nights[i], n+1
+// rules takes apart the flags of a night, which come as one list in words.
+func rules(flags string) []string {
+	var out []string
+	for _, part := range strings.Split(flags, ", ") {
+		for _, r := range strings.Split(part, " and ") {
+			if r = strings.TrimSpace(r); r != "" && !slices.Contains(out, r) {
+				out = append(out, r)
 			}
 		}
-		when := first
-		if n == 2 {
-			when += ", " + last
-		} else if n > 2 {
-			when += fmt.Sprintf(" to %s, %d nights", last, n)
-		}
-		out = append(out, flagged{letter[s], s, when})
 	}
 	return out
+}
+
+// A flagged is one rule of a chart with the nights it flags; rules have letters
+// in the order in which they appear.
+type flagged struct {
+	Letter, Words, Nights string
+	first, last           string
+	count                 int
+}
+
+// flagKey lists the rules that flag nights of a chart, with their letters.
+func flagKey(c *Chart) []flagged {
+	var out []flagged
+	for i := range min(len(c.Flags), len(c.Nights)) {
+		for _, r := range rules(c.Flags[i]) {
+			at := slices.IndexFunc(out, func(f flagged) bool { return f.Words == r })
+			if at < 0 {
+				at = len(out)
+				letter := fmt.Sprint(at + 1)
+				if at < 26 {
+					letter = string(rune('a' + at))
+				}
+				out = append(out, flagged{Letter: letter, Words: r, first: c.Nights[i]})
+			}
+			out[at].last, out[at].count = c.Nights[i], out[at].count+1
+		}
+	}
+	for i := range out {
+		f := &out[i]
+		switch f.Nights = f.first; {
+		case f.count == 2:
+			f.Nights += ", " + f.last
+		case f.count > 2:
+			f.Nights += fmt.Sprintf(" to %s, %d nights", f.last, f.count)
+		}
+	}
+	return out
+}
+
+// flagLabel is the letters of one night's flags.
+func flagLabel(key []flagged, flags string) string {
+	s := ""
+	for _, k := range key {
+		if slices.Contains(rules(flags), k.Words) {
+			s += k.Letter
+		}
+	}
+	return s
 }
 
 // controlRange is the vertical range: limits, weighted mean and most values. A
@@ -148,7 +163,7 @@ func (c *Chart) axis() string {
 
 // number writes a value with the decimals that the limits of its chart call for.
 func (c *Chart) number(v float64) string {
-	if w := c.High - c.Low; known(w) && w > 1e-6 && w < 1e6 && known(v) && math.Abs(v) < 1e9 {
+	if w := c.High - c.Low; known(w) && w > 1e-4 && w < 1e6 && known(v) && math.Abs(v) < 1e9 {
 		return fixed(v, decimals(w/4))
 	}
 	return general(v)
@@ -191,8 +206,8 @@ func general(v float64) string {
 		return "0"
 	}
 	e := int(math.Floor(math.Log10(math.Abs(v))))
-	if e < -6 || e > 7 {
-		return minus(fmt.Sprintf("%.4e", v))
+	if e < -4 || e > 7 {
+		return minus(strings.Replace(fmt.Sprintf("%.2e", v), "e-0", "e\u2212", 1))
 	}
 	return fixed(v, min(max(4-e, 0), 8))
 }
@@ -283,7 +298,7 @@ func (f *frame) inside(v []float64) []float64 {
 // nightMarks draws the values: rings, flagged ones full diamonds with their
 // letter, those outside the field arrows at its edge with their value.
 func (f *frame) nightMarks(c *Chart, at []float64) {
-	letter, _ := flagLetters(c)
+	key := flagKey(c)
 	r := math.Max(1.8, math.Min(3.4, (f.right-f.left)/float64(len(at))/2.2))
 	lettered, before := math.Inf(-1), ""
 	for i, v := range c.Values[:min(len(c.Values), len(at))] {
@@ -293,14 +308,14 @@ func (f *frame) nightMarks(c *Chart, at []float64) {
 		}
 		if !known(v) {
 			if flag != "" {
-				f.text("flag", "middle", f.px(at[i]), f.bottom-4, letter[flag])
+				f.text("flag", "middle", f.px(at[i]), f.bottom-4, flagLabel(key, flag))
 			}
 			continue
 		}
-		q, label := f.nightMark(at[i], v, r, flag != ""), letter[flag]
+		q, label := f.nightMark(at[i], v, r, flag != ""), flagLabel(key, flag)
 		far := v > f.y1 || v < f.y0
-		// One letter for a row of nights with the same flag, where they are too close for one each.
-		if !far && (flag == "" || q.x-lettered < 7 || flag == before && q.x-lettered < 11) {
+		// Where nights are too close for letters of their own, those of the first speak for the next; the key below has all.
+		if half := letters(label) / 2; !far && (flag == "" || q.x-half < lettered || flag == before && q.x-half < lettered+30) {
 			continue
 		}
 		if far {
@@ -312,7 +327,7 @@ func (f *frame) nightMarks(c *Chart, at []float64) {
 		}
 		half := letters(label) / 2
 		f.text("flag", "middle", math.Max(f.left+half, math.Min(f.right-half, q.x)), y, label)
-		lettered, before = q.x, flag
+		lettered, before = q.x+half+1, flag
 	}
 }
 
