@@ -301,6 +301,7 @@ func (f *frame) nightMarks(c *Chart, at []float64) {
 	key := flagKey(c)
 	r := math.Max(1.8, math.Min(3.4, (f.right-f.left)/float64(len(at))/2.2))
 	lettered, before := math.Inf(-1), ""
+	var labels []func() // written last, above the marks
 	for i, v := range c.Values[:min(len(c.Values), len(at))] {
 		flag := ""
 		if i < len(c.Flags) {
@@ -326,8 +327,13 @@ func (f *frame) nightMarks(c *Chart, at []float64) {
 			y = q.y + r + 12
 		}
 		half := letters(label) / 2
-		f.text("flag", "middle", math.Max(f.left+half, math.Min(f.right-half, q.x)), y, label)
+		labels = append(labels, func() {
+			f.text("flag", "middle", math.Max(f.left+half, math.Min(f.right-half, q.x)), y, label)
+		})
 		lettered, before = q.x+half+1, flag
+	}
+	for _, write := range labels {
+		write()
 	}
 }
 
