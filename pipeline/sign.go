@@ -15,6 +15,7 @@ import (
 
 	"pkvigil/db"
 	"pkvigil/db/job"
+	"pkvigil/pipeline/naming"
 	"pkvigil/pipeline/rehearse"
 )
 
@@ -268,6 +269,17 @@ func (s *Service) signExchange(ctx context.Context, tx pgx.Tx, g Signature, d *d
 	set, err := s.FindSet(ctx, tx, g.Object[0])
 	if err != nil {
 		return "", err
+	}
+	members, err := s.store.Members(ctx, tx, set.ID)
+	if err != nil {
+		return "", err
+	}
+	for _, rung := range g.Object[1:] {
+		if !slices.ContainsFunc(members, func(m db.Member) bool {
+			return m.Active && m.Role == naming.RoleScan && naming.RungKey(m.Rung) == naming.RungKey(rung)
+		}) {
+			return "", fmt.Errorf("set %s has no solution %q: %w", set.Key, rung, ErrUnknownObject)
+		}
 	}
 	d.Object, d.Before = set.Key, "labels as exported"
 	pair, err := json.Marshal([2]string{g.Object[1], g.Object[2]})
