@@ -164,7 +164,11 @@ func (s *Service) connect(ctx context.Context) error {
 		}
 		logTo := s.log.With().Str("part", "postgres").Logger()
 		s.serverConfig = cluster.Config{DataDir: dir, Log: lineLogger{logTo}}
-		srv, err := cluster.Start(ctx, s.serverConfig)
+		begin := cluster.Use // a command joins the server of a running service
+		if s.cfg.Sweep || s.cfg.Work {
+			begin = cluster.Start
+		}
+		srv, err := begin(ctx, s.serverConfig)
 		if err != nil {
 			return &DatabaseError{Err: err}
 		}

@@ -150,10 +150,20 @@ func (p *pairing) rung(in *Input, scans []Solution, readings []parse.Reading, or
 		p.left = append(p.left, spectra.LeftOut{Key: key, Check: "ph.missing", Text: "no pH row names this rung."})
 		return
 	}
-	if !at.IsZero() && !scans[0].Measured.IsZero() {
+	if !at.IsZero() && !scans[0].Measured.IsZero() && !repeated(at, in.Home) && !repeated(scans[0].Measured, in.Home) {
 		p.delay[key] = at.Sub(scans[0].Measured).Minutes()
 	}
 	p.rungs = append(p.rungs, spectra.Rung{Key: key, PH: ph, Scans: traces})
+}
+
+// repeated says whether a wall clock reading occurs twice in a zone, as in the
+// hour of an autumn clock change: a difference of such times says nothing.
+func repeated(t time.Time, zone *time.Location) bool {
+	if zone == nil {
+		return false
+	}
+	wall := t.In(zone).Format(time.DateTime)
+	return t.Add(time.Hour).In(zone).Format(time.DateTime) == wall || t.Add(-time.Hour).In(zone).Format(time.DateTime) == wall
 }
 
 // byClock gives the readings that fall into the time window of a scan.
