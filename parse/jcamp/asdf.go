@@ -164,8 +164,8 @@ func (a *asdf) row() *problem {
 	before := len(a.y)
 	for i = end; i < len(b); {
 		var p *problem
-		start := i
-		switch f := forms[b[i]]; f & 0xF0 {
+		f := forms[b[i]]
+		switch f & 0xF0 {
 		case isBlank:
 			i++
 			continue
@@ -182,38 +182,47 @@ func (a *asdf) row() *problem {
 			}
 			a.forms |= AFFN
 			p = a.actual(v)
-		case isSQZ, isMinusSQZ:
-			var v float64
-			if v, i, p = a.pseudo(i, f, isMinusSQZ); p == nil {
-				a.forms |= SQZ
-				p = a.actual(v)
-			}
-		case isDIF, isMinusDIF:
-			if a.delta, i, p = a.pseudo(i, f, isMinusDIF); p == nil {
-				p = a.difference()
-			}
-		case isDUP:
-			i, p = a.repeat(i, int(f&0xF))
-		case isMissing:
-			i++
-			p = a.gap()
 		case isEnd:
 			a.pos = i + 1
 			return a.whole(before)
-		default:
-			if a.comment(i) {
-				a.pos = a.endOfLine(i)
-				return a.whole(before)
+		case isComment, 0:
+			if !a.comment(i) {
+				return a.stop(parse.Show(b[i:a.endOfLine(i)]), "an ordinate in one of the published forms")
 			}
-			return a.stop(parse.Show(b[i:a.endOfLine(i)]), "an ordinate in one of the published forms")
+			a.pos = a.endOfLine(i)
+			return a.whole(before)
+		default:
+			i, p = a.item(i, f)
 		}
 		if p != nil {
 			return p
 		}
-		a.repeated = forms[b[start]]&0xF0 == isDUP
+		a.repeated = f&0xF0 == isDUP
 	}
 	a.pos = i
 	return a.whole(before)
+}
+
+// item reads an ordinate in a compressed form; the end is behind it.
+func (a *asdf) item(i int, f uint8) (end int, p *problem) {
+	switch f & 0xF0 {
+	case isSQZ, isMinusSQZ:
+		var v float64
+		if v, i, p = a.pseudo(i, f, isMinusSQZ); p == nil {
+			a.forms |= SQZ
+			p = a.actual(v)
+		}
+	case isDIF, isMinusDIF:
+		if a.delta, i, p = a.pseudo(i, f, isMinusDIF); p == nil {
+			p = a.difference()
+		}
+	case isDUP:
+		i, p = a.repeat(i, int(f&0xF))
+	default: // missing
+		i++
+		p = a.gap()
+	}
+	return i, p
 }
 
 // whole checks that a line held an ordinate.
@@ -245,7 +254,11 @@ func (a *asdf) actual(v float64) *problem {
 		return nil
 	}
 	a.last, a.prev = v, isSQZ
-	return a.add(v)
+	if len(a.y) >= a.limit {
+		return a.tooMany(1)
+	}
+	a.y = append(a.y, v)
+	return nil
 }
 
 func (a *asdf) add(v float64) *problem {

@@ -132,6 +132,8 @@ type decoder struct {
 	budget int // points that may still be decoded
 	count  int // records so far
 	eof    int // last line
+
+	longest, longLine int // length and number of the longest line
 }
 
 // Decode reads the structure and all tables of a file. Damage inside a table
@@ -158,6 +160,7 @@ func Decode(name string, data []byte, opt parse.Options) (*File, error) {
 	if err := d.closing(); err != nil {
 		return nil, err
 	}
+	d.manners(len(text) > 0 && bytes.IndexByte(text, '\n') < 0)
 	return d.file, nil
 }
 

@@ -57,7 +57,7 @@ func (m *maker) facts(b *Block, t *Table, s *parse.Scan) {
 			m.note(b.at("RESOLUTION"), "RESOLUTION is no single width in nm: %s", parse.Show(v))
 		}
 	}
-	m.acidity(b, s)
+	m.acidity(b, t, s)
 }
 
 // quantity cuts a text into its number and its unit. A decimal comma between
@@ -124,10 +124,13 @@ func bandwidth(text, xunits string) (float64, bool) {
 // pH as a word with its number, in running text.
 var acidityText = regexp.MustCompile(`\bpH\s*(?:=|:|of|is|value)?\s*(-?\d{1,2}(?:[.,]\d+)?)`)
 
+// pH as the variable of a page.
+var acidityPage = regexp.MustCompile(`^[pP][hH]\s*=\s*(-?\d{1,2}(?:\.\d+)?)$`)
+
 // acidity takes the pH of a block: from a label of that name, or from the
-// record of the solvent, the only place the standard has for it. Two
-// different values are none.
-func (m *maker) acidity(b *Block, s *parse.Scan) {
+// record of the solvent, the only place the standard has for it, or from the
+// page of NTUPLES named by its pH. Two different values are none.
+func (m *maker) acidity(b *Block, t *Table, s *parse.Scan) {
 	var values []float64
 	line := 0
 	take := func(text string, at int) {
@@ -159,6 +162,9 @@ func (m *maker) acidity(b *Block, s *parse.Scan) {
 				take(g[1], r.Line)
 			}
 		}
+	}
+	if g := acidityPage.FindStringSubmatch(t.Page); g != nil {
+		take(g[1], t.Line)
 	}
 	switch len(values) {
 	case 0:

@@ -86,7 +86,7 @@ func TestLinkedFile(t *testing.T) {
 
 func TestPages(t *testing.T) {
 	c := readFile(t, "pages.dx")
-	if len(c.Scans) != 3 || c.Scans[0].Label != "Kinetics T=0" || c.Scans[2].Label != "Kinetics T=120" {
+	if len(c.Scans) != 3 || c.Scans[0].Label != "Kinetics T=0" || c.Scans[2].Label != "Kinetics pH= 7.25" || c.Scans[2].PH != 7.25 || !math.IsNaN(c.Scans[1].PH) {
 		t.Fatalf("%+v", c.Scans)
 	}
 	a, b, p := c.Scans[0], c.Scans[1], c.Scans[2]
@@ -110,6 +110,26 @@ func TestCommasAndRows(t *testing.T) {
 	c = readFile(t, "row.jdx")
 	if s = c.Scans[0]; len(c.Scans) != 1 || s.WavelengthNM[1] != 401 || !remarked(c, "one after another") {
 		t.Errorf("%+v %v", s, c.Remarks)
+	}
+}
+
+// The same text in another encoding reads the same.
+func TestEncodings(t *testing.T) {
+	wide := []byte{0xFF, 0xFE}
+	for _, c := range []byte(sound) {
+		wide = append(wide, c, 0)
+	}
+	for enc, data := range map[string][]byte{"utf-16le": wide, "utf-8": append([]byte("\xEF\xBB\xBF"), sound...)} {
+		c, err := Read("t", data, parse.Options{})
+		if err != nil || c.Encoding != enc || !closeTo(c.Scans[0].Absorbance[5], 0.6) || !c.Complete {
+			t.Errorf("%s: %v, %v", enc, c, err)
+		}
+	}
+	if _, err := Read("t", wide[:len(wide)-1], parse.Options{}); err == nil {
+		t.Error("half a character at the end is accepted")
+	}
+	if _, err := Read("t", []byte(sound), parse.Options{MaxBytes: 100}); err == nil {
+		t.Error("a file above the limit is accepted")
 	}
 }
 
@@ -176,6 +196,11 @@ func TestDeviations(t *testing.T) {
 		{"empty table", "400 10 20 30\n403 40 50 60\n", "", "an empty table", 10, ""},
 		{"page outside a section", "##XYDATA= (X", "##DATA TABLE= (X", "outside NTUPLES", 10, ""},
 		{"bandwidth in another way", "##XUNITS", "##RESOLUTION= 2,400; 4,700\n##XUNITS", "", 0, "no single width"},
+		{"long line", "##XUNITS", "##OWNER= " + strings.Repeat("o", 90) + "\n##XUNITS", "", 0, "a line of 99 characters"},
+		{"windows characters", "##XUNITS", "##OWNER= M\xfcller\n##XUNITS", "", 0, "read as windows-1252"},
+		{"wrong class", "##XUNITS", "##DATA CLASS= NTUPLES\n##XUNITS", "", 0, "DATA CLASS says"},
+		{"negative factors", "0.01\n##FIRSTX= 400\n##LASTX= 405", "-0.01\n##FIRSTX= -400\n##LASTX= -405", "disagree about the abscissa", 12, ""},
+		{"negative ordinate factor", "0.01\n##FIRSTX= 400\n##LASTX= 405\n##NPOINTS= 6\n##XYDATA= (X++(Y..Y))\n400 10 20 30\n403 40 50 60", "-0.01\n##FIRSTX= 400\n##LASTX= 405\n##NPOINTS= 6\n##XYDATA= (X++(Y..Y))\n400-10-20-30\n403-40-50-60", "", 0, "a negative factor"},
 		{"several pH", "##XUNITS", "##$PH= 7\n##.SOLVENT NAME= pH 8\n##XUNITS", "", 0, "several values of pH"},
 		{"ambiguous date", "##XUNITS", "##DATE= 05/06/2018\n##TIME= 10:00\n##XUNITS", "", 0, "cannot be told apart"},
 		{"NUL", "t\n", "\x00\n", "NUL", 1, ""},

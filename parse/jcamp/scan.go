@@ -1,7 +1,6 @@
 package jcamp
 
 import (
-	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -215,20 +214,29 @@ func (m *maker) wavelengths(b *Block, t *Table, x []float64) error {
 	if !ok {
 		return m.fail(b.at("XUNITS"), "XUNITS", parse.Show(t.XUnits), "NANOMETERS, MICROMETERS, ANGSTROMS or 1/CM", "the unit is not guessed; correct the header")
 	}
+	if factor == 0 {
+		m.note(b.at("XUNITS"), "wavelengths computed from wavenumbers are those in vacuum")
+	}
 	for i, v := range x {
-		switch {
-		case factor == 0 && v != 0:
-			x[i] = 1e7 / v
-		case factor == 0.1:
-			x[i] = v / 10
-		case factor != 1:
-			x[i] = v * factor
+		if factor != 1 {
+			x[i] = inNM(v, factor)
 		}
 		if !(x[i] >= 50 && x[i] <= 20000) {
 			return m.fail(b.at("XUNITS"), "XUNITS", fmt.Sprintf("abscissa %s in %s", number(v), parse.Show(t.XUnits)), "wavelengths from 50 to 20000 nm", "the unit does not fit the numbers; correct the header")
 		}
 	}
 	return nil
+}
+
+// inNM turns an abscissa into nm; factor is one of abscissaUnit.
+func inNM(v, factor float64) float64 {
+	switch {
+	case factor == 0 && v != 0:
+		return 1e7 / v
+	case factor == 0.1: // exact where the multiplication is not
+		return v / 10
+	}
+	return v * factor
 }
 
 // ordinateScale gives the scale that a text of units names.
@@ -254,21 +262,21 @@ func (m *maker) absorbances(b *Block, t *Table, y []float64) (string, error) {
 	if !ok {
 		return "", m.fail(line, "YUNITS", parse.Show(t.YUnits), "ABSORBANCE or TRANSMITTANCE", "the unit is not guessed; correct the header")
 	}
-	mid, top, err := middle(y)
-	if err != nil {
-		return "", m.fail(t.Line, t.Kind, err.Error(), "ordinates", "export the file again")
+	top, ok := highest(y)
+	if !ok {
+		return "", m.fail(t.Line, t.Kind, "missing ordinates only", "ordinates", "export the file again")
 	}
 	wrong := func(remedy string) error {
-		return m.fail(line, "YUNITS", fmt.Sprintf("%s with a median of %s and a maximum of %s", parse.Show(t.YUnits), number(mid), number(top)), "ordinates of that scale", remedy)
+		return m.fail(line, "YUNITS", fmt.Sprintf("%s with a median of %s and a maximum of %s", parse.Show(t.YUnits), number(median(y)), number(top)), "ordinates of that scale", remedy)
 	}
 	switch scale {
 	case "absorbance":
-		if math.Abs(mid) > 15 {
+		if mostly(y, 15) {
 			return "", wrong("these numbers are no absorbances; correct YUNITS or the factor")
 		}
 		return scale, nil
 	case "transmittance":
-		if top > 2 && (mid <= 1.5 || mid > 150) {
+		if top > 2 && (!mostly(y, 1.5) || mostly(y, 150)) {
 			return "", wrong("write %TRANSMITTANCE if these are percents, else correct the factor")
 		}
 		if top > 2 {
@@ -276,7 +284,7 @@ func (m *maker) absorbances(b *Block, t *Table, y []float64) (string, error) {
 			m.note(line, "TRANSMITTANCE up to %s can only be percents and is read so", number(top))
 		}
 	case "percent transmittance":
-		if mid > 150 || top <= 1.5 {
+		if mostly(y, 150) || top <= 1.5 {
 			return "", wrong("write TRANSMITTANCE if these are fractions, or correct what the numbers are")
 		}
 	}
@@ -301,20 +309,34 @@ func (m *maker) absorbances(b *Block, t *Table, y []float64) (string, error) {
 	return scale, nil
 }
 
-// middle gives median and maximum of the ordinates that are there.
-func middle(y []float64) (median, top float64, err error) {
-	v := make([]float64, 0, len(y))
-	for _, a := range y {
-		if math.IsInf(a, 0) {
-			return 0, 0, errors.New("an ordinate beyond all bounds")
-		}
-		if a == a {
-			v = append(v, a)
+// highest gives the largest ordinate; ok tells whether there is any.
+func highest(y []float64) (top float64, ok bool) {
+	top = math.Inf(-1)
+	for _, v := range y {
+		if v > top {
+			top = v
 		}
 	}
-	if len(v) == 0 {
-		return 0, 0, errors.New("missing ordinates only")
+	return top, !math.IsInf(top, -1)
+}
+
+// mostly tells whether more than half of the ordinates exceed a bound, which
+// asks for their median without sorting them.
+func mostly(y []float64, bound float64) bool {
+	above, all := 0, 0
+	for _, v := range y {
+		if v > bound {
+			above++
+		}
+		if v == v {
+			all++
+		}
 	}
+	return 2*above > all
+}
+
+func median(y []float64) float64 {
+	v := slices.DeleteFunc(slices.Clone(y), math.IsNaN)
 	slices.Sort(v)
-	return v[len(v)/2], v[len(v)-1], nil
+	return v[len(v)/2]
 }

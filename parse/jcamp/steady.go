@@ -3,6 +3,7 @@ package jcamp
 import (
 	"fmt"
 	"math"
+	"slices"
 
 	"pkvigil/parse"
 )
@@ -211,10 +212,24 @@ func (d *decoder) finish(b *Block) {
 	if n == 0 {
 		return
 	}
+	if class := normal([]byte(b.get("DATACLASS"))); class != "" && !slices.ContainsFunc(b.Tables, func(t Table) bool { return classOf(t.Kind) == class }) {
+		d.note(b.at("DATACLASS"), "DATA CLASS says %s, the table is %s", parse.Show(b.get("DATACLASS")), classOf(b.Tables[0].Kind))
+	}
 	t := &b.Tables[n-1]
 	for _, key := range [...]string{"XUNITS", "YUNITS", "XFACTOR", "YFACTOR", "FIRSTX", "LASTX"} {
 		if t.Kind != "DATATABLE" && t.Err == nil && b.at(key) > t.Line {
 			t.Err, t.X, t.Y = d.fail(b.at(key), key, "a parameter after the table", "all parameters before it", "put the line before the table"), nil, nil
 		}
 	}
+}
+
+// classOf is the DATA CLASS that goes with a kind of table.
+func classOf(kind string) string {
+	switch kind {
+	case "DATATABLE":
+		return "NTUPLES"
+	case "PEAKASSIGNMENTS":
+		return "ASSIGNMENTS"
+	}
+	return kind
 }

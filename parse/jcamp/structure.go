@@ -85,7 +85,8 @@ type record struct {
 
 // next takes the record at pos, which is at the start of a line that opens
 // one, and returns the position after it.
-func next(text []byte, pos, line int) (r record, end, after int) {
+func (d *decoder) next(pos, line int) (r record, end, after int) {
+	text := d.text
 	r.line = line
 	nl := bytes.IndexByte(text[pos:], '\n')
 	if nl < 0 {
@@ -93,6 +94,7 @@ func next(text []byte, pos, line int) (r record, end, after int) {
 		return r, len(text), line
 	}
 	r.head = text[pos : pos+nl]
+	d.length(line, nl)
 	pos, line = pos+nl+1, line+1
 	start := pos
 	for pos < len(text) {
@@ -103,10 +105,34 @@ func next(text []byte, pos, line int) (r record, end, after int) {
 		if opensRecord(text[pos : pos+nl]) {
 			break
 		}
+		d.length(line, nl)
 		pos, line = min(pos+nl+1, len(text)), line+1
 	}
 	r.body = text[start:pos]
 	return r, pos, line
+}
+
+// length keeps the first of the longest lines.
+func (d *decoder) length(line, n int) {
+	if n > d.longest {
+		d.longest, d.longLine = n, line
+	}
+}
+
+// manners notes what the text does against the rules for lines and characters.
+func (d *decoder) manners(crOnly bool) {
+	if d.longest > maxLine+1 { // the CR of a line end may be among them
+		d.note(d.longLine, "a line of %d characters; the standard ends them at %d", d.longest, maxLine)
+	}
+	if crOnly {
+		d.note(0, "lines end in CR alone")
+	}
+	for i, c := range d.text {
+		if c >= 0x80 {
+			d.note(1+bytes.Count(d.text[:i], []byte{'\n'}), "characters beyond ASCII, read as %s", d.file.Encoding)
+			return
+		}
+	}
 }
 
 // structure walks through the records of the file.
@@ -117,7 +143,7 @@ func (d *decoder) structure() error {
 	}
 	for pos < len(d.text) {
 		var r record
-		r, pos, line = next(d.text, pos, line)
+		r, pos, line = d.next(pos, line)
 		if d.count++; d.count > maxRecords {
 			return d.fail(r.line, "", "more than "+strconv.Itoa(maxRecords)+" records", "fewer", "split the file")
 		}

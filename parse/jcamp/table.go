@@ -59,6 +59,9 @@ func (d *decoder) fill(b *Block, t *Table, value []byte, r record) error {
 		return err
 	}
 	t.Declared, t.YFactor, t.Steady = f.n, f.yf, l.steady
+	if f.xf < 0 || f.yf < 0 {
+		t.note(r.line, "a negative factor, applied as it stands")
+	}
 	if f.n > d.budget {
 		return d.fail(b.at("NPOINTS"), "NPOINTS", strconv.Itoa(f.n), fmt.Sprintf("at most %d in a file of this size", d.budget), "correct the header or split the file")
 	}
