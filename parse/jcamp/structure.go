@@ -65,7 +65,7 @@ func uncomment(b []byte) []byte {
 func opensRecord(line []byte) bool {
 	for i, c := range line {
 		switch c {
-		case ' ', '\t':
+		case ' ', '\t', '\r', '\v', '\f', 0x1a: // those that trim drops
 		case '#':
 			return i+1 < len(line) && line[i+1] == '#'
 		default:
