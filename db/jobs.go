@@ -189,3 +189,15 @@ func (s *Store) PointsStored(ctx context.Context, q Querier) (points, replaced i
 	}
 	return points, replaced, nil
 }
+
+// ReferenceNights counts the nights before the given one on which a reference
+// gave a result on an instrument.
+func (s *Store) ReferenceNights(ctx context.Context, instrument, compound, before string) (int, error) {
+	var n int
+	err := s.pool.QueryRow(ctx, `SELECT count(DISTINCT s.night) FROM pkvigil.sample_set s JOIN pkvigil.standing st ON st.set_id = s.id AND st.current
+		WHERE s.instrument = $1 AND s.compound = $2 AND s.night < $3::date`, instrument, compound, before).Scan(&n)
+	if err != nil {
+		return 0, fmt.Errorf("counting nights of %s: %w", compound, safe(err))
+	}
+	return n, nil
+}

@@ -53,7 +53,7 @@ func (s *Service) Recompute(ctx context.Context, id int64) (*Again, error) {
 	if err != nil {
 		return nil, fmt.Errorf("result %d: %w", id, err)
 	}
-	in.Exchange, in.Corrections = rec.Exchange, rec.Used.Corrections
+	in.Exchange, in.Corrections, in.NewLot = rec.Exchange, rec.Used.Corrections, rec.Used.NewLot
 	now := assay.Compute(*in)
 	again, err := s.result(ctx, data, in, &rec.Used, now, r.At)
 	if err != nil {

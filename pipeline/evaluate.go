@@ -68,7 +68,11 @@ func (s *Service) evaluate(ctx context.Context, now time.Time) error {
 		return err
 	}
 	return s.store.InTx(ctx, func(tx pgx.Tx) error {
-		signals, err := s.judgeCharts(ctx, tx, ts, now)
+		nights := 1
+		if replaced != last.Replaced {
+			nights = lookBack
+		}
+		signals, err := s.judgeCharts(ctx, tx, ts, nights, now)
 		if err != nil {
 			return err
 		}

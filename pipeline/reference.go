@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"github.com/jackc/pgx/v5"
+	"gonum.org/v1/gonum/stat"
 
 	"pkvigil/db"
 	"pkvigil/pipeline/assay"
@@ -273,12 +274,15 @@ func (t *track) learn(c settings.Charts, tonight string) {
 	}
 	t.learned = len(raw)
 	r := chart.AlgorithmA(raw)
-	t.centre = r.Centre
 	prior := t.budget()
-	if t.scale() == chart.Squares {
-		// A square of nine degrees of freedom scatters by 0.47 of itself.
-		prior = math.Sqrt(2.0/9) * t.centre
+	if t.scale() == chart.Squares && len(raw) > 1 {
+		// Squares are skewed: a robust centre would lie below their mean, and
+		// every later night above it. A square of nine degrees of freedom
+		// scatters by 0.47 of itself.
+		r.Centre, r.SD = stat.MeanStdDev(raw, nil)
+		prior = math.Sqrt(2.0/9) * r.Centre
 	}
+	t.centre = r.Centre
 	n := float64(t.learned)
 	sd := r.SD
 	if math.IsNaN(sd) || n < 2 {
@@ -323,9 +327,9 @@ func (s *Service) chartRules(c settings.Charts, charts int) (chart.Rules, error)
 	return rules, nil
 }
 
-// judgeCharts judges the newest night of every chart and stores what the
-// charts say; baselines are stored when they change their stage.
-func (s *Service) judgeCharts(ctx context.Context, tx pgx.Tx, ts []*track, now time.Time) ([]chartSignal, error) {
+// judgeCharts judges the newest nights of every chart and stores what the
+// charts say: one night as a rule, more where earlier results were replaced; baselines are stored when they change their stage.
+func (s *Service) judgeCharts(ctx context.Context, tx pgx.Tx, ts []*track, nights int, now time.Time) ([]chartSignal, error) {
 	set, _, _ := s.current()
 	rules, err := s.chartRules(set.Charts, chartsPerInstrument)
 	if err != nil {
@@ -347,13 +351,18 @@ func (s *Service) judgeCharts(ctx context.Context, tx pgx.Tx, ts []*track, now t
 		}
 		js := chart.Judge(t.base, t.chartValues(), r)
 		last := len(js) - 1
+		for i := max(0, len(js)-nights); i <= last; i++ {
+			if js[i].NoData {
+				continue
+			}
+			for _, p := range t.points[i] {
+				if p.Judged {
+					rows = append(rows, judgementRow(p.ID, id, js[i], now))
+				}
+			}
+		}
 		if last < 0 || js[last].NoData {
 			continue
-		}
-		for _, p := range t.points[last] {
-			if p.Judged {
-				rows = append(rows, judgementRow(p.ID, id, js[last], now))
-			}
 		}
 		for _, f := range js[last].Flags {
 			signals = append(signals, chartSignal{Series: t.series, Night: t.nights[last], Rule: f.Rule, Sentence: f.Sentence, Matters: js[last].Matters})

@@ -75,6 +75,7 @@ type used struct {
 	ArchiveID     int64              `json:"archive_result_id,omitempty"`
 	MemberIDs     []int64            `json:"member_ids"`
 	Electrode     string             `json:"electrode,omitempty"`
+	NewLot        string             `json:"new_lot,omitempty"`
 	Corrections   map[string]float64 `json:"buffer_corrections,omitempty"`
 }
 
@@ -84,6 +85,7 @@ func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *u
 	u := &used{SettingsID: id}
 	in := baseInput(set, data)
 	var first time.Time
+	var err error
 	for _, m := range data.Members {
 		u.MemberIDs = append(u.MemberIDs, m.ID)
 		if m.Scan == nil {
@@ -111,6 +113,10 @@ func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *u
 	if err := s.archiveOf(ctx, in, u, data); err != nil {
 		return nil, nil, err
 	}
+	if u.NewLot, err = s.newLot(ctx, set, in, data); err != nil {
+		return nil, nil, err
+	}
+	in.NewLot = u.NewLot
 	ex, err := s.signedExchanges(ctx, data.Set.Key)
 	if err != nil {
 		return nil, nil, err
@@ -129,6 +135,36 @@ func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *u
 		u.Corrections = in.Corrections
 	}
 	return in, u, nil
+}
+
+// pairedNights is how long an old and a new lot of a reference run together.
+const pairedNights = 5
+
+// newLot says so when a reference is of a lot that an older one of the same
+// substance precedes on this instrument, and has not run for five nights yet:
+// its amount and ratios may step, its pKa may not.
+func (s *Service) newLot(ctx context.Context, cfg *settings.Settings, in *assay.Input, data *db.SetData) (string, error) {
+	c := in.Compound
+	if c == nil || !c.Reference || c.Title == "" {
+		return "", nil
+	}
+	for _, old := range cfg.Compounds {
+		if !old.Reference || old.Title != c.Title || old.Name == c.Name {
+			continue
+		}
+		before, err := s.store.FirstStandingReference(ctx, nil, data.Set.Instrument, old.Name, old.RefLot, data.Set.Night)
+		if err != nil || before == 0 {
+			return "", err
+		}
+		nights, err := s.store.ReferenceNights(ctx, data.Set.Instrument, c.Name, data.Set.Night)
+		if err != nil {
+			return "", err
+		}
+		if nights < pairedNights {
+			return fmt.Sprintf("%s is a new lot of %s beside %s (%d of %d nights together): amount and ratios may differ, the pKa may not. A new lot, or something else?", c.Name, c.Title, old.Name, nights, pairedNights), nil
+		}
+	}
+	return "", nil
 }
 
 // baseInput is the part of the input that settings and set give.

@@ -2,6 +2,7 @@ package pipeline
 
 import (
 	"context"
+	"encoding/json"
 	"fmt"
 	"path/filepath"
 	"slices"
@@ -216,9 +217,18 @@ func (s *Service) foundSets(ctx context.Context, _ *rehearse.Story, out *rehears
 		for _, c := range r.Checks {
 			if c.Outcome != db.Stands {
 				f.Checks = append(f.Checks, c.Key)
-				f.Asked = f.Asked || c.Key == "label.exchange" || c.Key == "ladder.shift" || c.Key == "lot.unknown"
+				f.Asked = f.Asked || c.Key == "label.exchange" || c.Key == "ladder.shift" || c.Key == "lot.unknown" || c.Key == "lot.new"
 			}
 		}
+		raw, err := s.store.RecordOf(ctx, nil, r.ID)
+		if err != nil {
+			return err
+		}
+		var rec storedRecord
+		if err := json.Unmarshal(raw, &rec); err != nil {
+			return fmt.Errorf("calculation record of result %d: %w", r.ID, err)
+		}
+		f.Corrected = len(rec.Used.Corrections) > 0
 		for _, p := range r.PKa {
 			f.PKa, f.U = append(f.PKa, p.PKa), append(f.U, p.Expanded)
 		}

@@ -150,6 +150,7 @@ func (in *Input) facts(pr pairing, el *acidbase.Electrode, calErr error, tC floa
 		MissingBlank: len(pr.blanks) == 0,
 	}
 	f.SubstituteBlank = f.MissingBlank && in.Method.SubstituteBlank && in.Substitute != nil
+	f.NewLot = in.NewLot
 	if c := in.Compound; c != nil {
 		if c.Profile == string(verdict.ThreeSolution) {
 			f.Profile = verdict.ThreeSolution

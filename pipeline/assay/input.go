@@ -60,6 +60,7 @@ type Input struct {
 	NeedsCalibration bool
 	Home             *time.Location
 
+	NewLot     string                 // sentence when the lot of a reference is new beside an older one
 	Archive    *Archive               // limit spectra of the same compound on the same instrument; nil: none yet
 	Others     []spectra.LibraryEntry // archived spectra of other compounds, for the wrong-dye check
 	Substitute *spectra.Trace

@@ -24,15 +24,16 @@ type FoundCase struct {
 
 // A FoundSet is the last word of the program on one set, and what it said on the way.
 type FoundSet struct {
-	Set      string
-	Verdict  string    // "stands", "stands-noted", "held", "in-question", "no number", "waiting"
-	Checks   []string  // keys of the checks that did not pass
-	PKa      []float64 // empty without a number
-	U        []float64 // expanded uncertainty, coverage factor 2, same length
-	Revision int       // 1-based
-	Waited   bool      // it was waiting for something at some time
-	LeftOut  []string  // keys of rungs left out
-	Asked    bool      // the program asked a person something about it, or proposed a repair
+	Set       string
+	Verdict   string    // "stands", "stands-noted", "held", "in-question", "no number", "waiting"
+	Checks    []string  // keys of the checks that did not pass
+	PKa       []float64 // empty without a number
+	U         []float64 // expanded uncertainty, coverage factor 2, same length
+	Revision  int       // 1-based
+	Waited    bool      // it was waiting for something at some time
+	LeftOut   []string  // keys of rungs left out
+	Corrected bool      // computed again with a corrected input after a person accepted it
+	Asked     bool      // the program asked a person something about it, or proposed a repair
 }
 
 // A FoundFile is a file the program did not simply take.

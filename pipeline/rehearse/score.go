@@ -235,7 +235,7 @@ func (s *scorer) harm(t Truth) {
 		return
 	}
 	s.card.HarmSets++
-	if set.Verdict != "stands" {
+	if set.Verdict != "stands" || set.Corrected {
 		s.card.HarmCaught++
 	}
 }

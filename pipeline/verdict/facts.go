@@ -73,5 +73,6 @@ type Facts struct {
 	Foreign         []string    // rungs whose spectrum does not belong to this dye
 	MissingBlank    bool
 	SubstituteBlank bool
+	NewLot          string // sentence when the lot of a reference is new beside an older one
 	UnknownLot      string
 }

@@ -84,6 +84,9 @@ func (j *judge) labels(f Facts) {
 	if f.BestDye != "" {
 		j.finding("dye.identity", Held, fmt.Sprintf("The spectra look like %s (cosine %.5f), not like what the name says.", f.BestDye, f.BestCosine), "Look at the vial and its label.")
 	}
+	if f.NewLot != "" {
+		j.finding("lot.new", Noted, f.NewLot, "Run old and new lot together for five nights, then sign the new baseline.")
+	}
 	if f.UnknownLot != "" {
 		j.finding("lot.unknown", Held, fmt.Sprintf("%s is not a compound of the settings; fitted, not released.", f.UnknownLot), "Add the compound to the settings, or correct the name.")
 	}
