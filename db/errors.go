@@ -7,6 +7,7 @@ import (
 	"net"
 	"regexp"
 	"strings"
+	"syscall"
 
 	"github.com/jackc/pgx/v5/pgconn"
 )
@@ -27,8 +28,10 @@ func Away(err error) bool {
 	if _, ok := errors.AsType[*pgconn.ConnectError](err); ok {
 		return true
 	}
-	if _, ok := errors.AsType[net.Error](err); ok {
-		return true
+	if e, ok := errors.AsType[net.Error](err); ok {
+		// The bare number of a system call is a net.Error too: a file that is missing is no lost server.
+		number, bare := e.(syscall.Errno)
+		return !bare || number == syscall.ECONNREFUSED || number == syscall.ECONNRESET || number == syscall.EPIPE
 	}
 	if errors.Is(err, io.EOF) || errors.Is(err, io.ErrUnexpectedEOF) || errors.Is(err, net.ErrClosed) ||
 		errors.Is(err, context.DeadlineExceeded) {

@@ -240,6 +240,8 @@ func (s *Service) Once(ctx context.Context) error {
 	if err := s.startQueue(ctx); err != nil {
 		return err
 	}
+	// The next run shall not have to wait until the leases of this one lapse.
+	s.defers("leases", func(ctx context.Context) error { return s.store.ReleaseRoots(ctx, s.holder()) })
 	if err := s.enqueuePending(ctx); err != nil {
 		return err
 	}

@@ -206,7 +206,7 @@ func databaseURL(st settings.Storage) (string, error) {
 		if v := os.Getenv(st.DatabaseURLEnv); v != "" {
 			return v, nil
 		}
-		return "", fmt.Errorf("settings: storage.database_url_env names %s, but that variable is empty; set it, or remove the key to use a private server", st.DatabaseURLEnv)
+		return "", &settings.Error{File: "settings", Key: "storage.database_url_env", Found: fmt.Sprintf("%s, and that variable is empty", st.DatabaseURLEnv), Expected: "a variable that holds the address of a server; without the key a private server is used"}
 	}
 	if st.DatabaseURLFile != "" {
 		info, err := os.Stat(st.DatabaseURLFile)
@@ -214,7 +214,7 @@ func databaseURL(st settings.Storage) (string, error) {
 			return "", fmt.Errorf("settings: storage.database_url_file: %w", err)
 		}
 		if info.Mode().Perm()&0o077 != 0 {
-			return "", fmt.Errorf("settings: storage.database_url_file %s can be read by others (mode %o); chmod 600 it", st.DatabaseURLFile, info.Mode().Perm())
+			return "", &settings.Error{File: "settings", Key: "storage.database_url_file", Found: fmt.Sprintf("%s, which others can read (mode %o)", st.DatabaseURLFile, info.Mode().Perm()), Expected: "a file that only the service can read: chmod 600 it"}
 		}
 		b, err := os.ReadFile(st.DatabaseURLFile)
 		if err != nil {

@@ -54,10 +54,10 @@ func Verbs() [][2]string {
 		{actStrike, "RESULT or SET        withdraw it, for good"},
 		{actConfirm, "CASE RESULT          this result is unaffected by the case"},
 		{actAffected, "CASE RESULT          this result is affected by the case"},
-		{actExchange, "SET RUNG RUNG        the two labels were exchanged; compute again, both versions stay"},
+		{actExchange, "SET RUNG RUNG        labels were exchanged; compute again, both versions stay"},
 		{actBaseline, "REFERENCE FROM TO    learn the baseline anew from these nights (YYYY-MM-DD)"},
 		{actAccept, "CASE or SET          what was proposed: a buffer's value, an exchange of labels"},
-		{actCorrect, "BUFFER PH            the true value of a bottle; what was read with it is computed again"},
+		{actCorrect, "BUFFER PH            the true value of a bottle; its readings are computed again"},
 		{actReopen, "INSTRUMENT           results of the instrument may stand again"},
 		{actRecompute, "SET                  compute again with the settings in force"},
 	}

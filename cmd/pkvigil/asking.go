@@ -278,7 +278,7 @@ func (a *app) probe() *cobra.Command {
 	var mail bool
 	c := &cobra.Command{
 		Use: "probe", Short: "Is everything visible and alive?", Args: cobra.NoArgs,
-		Long:    "Looks at folders, database, queue, messages and trail. Exits with 10 when something needs attention.",
+		Long:    "Looks at folders, database, queue, messages and trail. Exits with 10 when\nsomething needs attention.",
 		Example: "  pkvigil probe\n  pkvigil probe --mail     also sends a test message to every receiver",
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			return a.with(cmd.Context(), pipeline.Config{ReadOnly: true}, func(s *pipeline.Service) error {

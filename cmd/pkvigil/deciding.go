@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"io"
 	"os"
+	"slices"
 	"strings"
 	"time"
 
@@ -13,6 +14,8 @@ import (
 	"pkvigil/parse"
 	"pkvigil/pipeline"
 	"pkvigil/pipeline/brief"
+	"pkvigil/pipeline/drift"
+	"pkvigil/pipeline/naming"
 )
 
 // signed are the flags of every decision.
@@ -52,6 +55,9 @@ func (a *app) sign() *cobra.Command {
 			if err := g.check(); err != nil {
 				return err
 			}
+			if err := knownDecision(args[0]); err != nil {
+				return err
+			}
 			return a.with(cmd.Context(), pipeline.Config{}, func(s *pipeline.Service) error {
 				said, err := s.Sign(cmd.Context(), pipeline.Signature{Verb: args[0], Object: args[1:], As: g.as, Because: g.because})
 				if err != nil {
@@ -65,12 +71,34 @@ func (a *app) sign() *cobra.Command {
 	return c
 }
 
+// knownDecision refuses a word that is no decision, with the nearest one.
+func knownDecision(verb string) error {
+	var words []string
+	for _, v := range pipeline.Verbs() {
+		words = append(words, v[0])
+	}
+	if slices.Contains(words, verb) {
+		return nil
+	}
+	return &usageError{fmt.Errorf("sign %q: expected a decision, perhaps %s; there are %s", verb, naming.ClosestWord(verb, words), strings.Join(words, ", "))}
+}
+
+// eventKinds are the words of `pkvigil note`: what drift looks for.
+func eventKinds() []string {
+	var out []string
+	for _, k := range []drift.EventKind{drift.EventLamp, drift.EventElectrode, drift.EventCalibration, drift.EventBuffer, drift.EventCuvette, drift.EventStock, drift.EventSeries, drift.EventWavelength, drift.EventService} {
+		out = append(out, string(k))
+	}
+	return append(out, "lot")
+}
+
 func (a *app) adopt() *cobra.Command {
 	var g signed
 	var role, rung string
 	c := &cobra.Command{
 		Use: "adopt FILE SET", Short: "Place a parked file in a set",
-		Example: `  pkvigil adopt CRR-l04_r07.csv CRR-104 --rung r07 --as "Anna Berg" --because "typing error in the name"`,
+		Example: `  pkvigil adopt CRR-l04_r07.csv CRR-104 --rung r07 \
+      --as "Anna Berg" --because "typing error in the name"`,
 		Args: func(_ *cobra.Command, args []string) error {
 			if len(args) != 2 {
 				return &usageError{fmt.Errorf("name the file and the set: pkvigil adopt FILE SET")}
@@ -100,13 +128,16 @@ func (a *app) note() *cobra.Command {
 	var g signed
 	var resource, instrument, at string
 	c := &cobra.Command{
-		Use: "note KIND TEXT", Short: "Log an event: lamp, electrode, buffer, cell, stock, lot, wavelength, service",
-		Long:    "Events change what is in use and make their causes likelier when something moves the same night.",
+		Use: "note KIND TEXT", Short: "Log an event: a new lamp, electrode, buffer, cell, stock, service",
+		Long:    "Events change what is in use and make their causes likelier when something moves\nthe same night. Kinds:\n  " + strings.Join(eventKinds(), ", ") + ".",
 		Example: `  pkvigil note electrode "new electrode" --resource E-35 --instrument U1 --as "Anna Berg"`,
 		Args:    cobra.ExactArgs(2),
 		RunE: func(cmd *cobra.Command, args []string) error {
 			if strings.TrimSpace(g.as) == "" {
 				return &usageError{fmt.Errorf("say who logs it: --as \"Anna Berg\"")}
+			}
+			if kinds := eventKinds(); !slices.Contains(kinds, args[0]) {
+				return &usageError{fmt.Errorf("note %q: expected a kind of event, perhaps %s; there are %s", args[0], naming.ClosestWord(args[0], kinds), strings.Join(kinds, ", "))}
 			}
 			e := db.EventRow{Event: parse.Event{Kind: args[0], Text: args[1], Resource: resource, By: g.as}}
 			if instrument != "" {
@@ -114,13 +145,18 @@ func (a *app) note() *cobra.Command {
 				e.Event.Instrument = instrument
 			}
 			if at != "" {
-				t, err := time.ParseInLocation("2006-01-02 15:04", at, time.Local)
-				if err != nil {
+				if _, err := time.Parse("2006-01-02 15:04", at); err != nil {
 					return &usageError{fmt.Errorf("--at %q: expected a moment like \"2026-09-14 17:30\"", at)}
 				}
-				e.At = t
 			}
 			return a.with(cmd.Context(), pipeline.Config{}, func(s *pipeline.Service) error {
+				if at != "" {
+					t, err := time.ParseInLocation("2006-01-02 15:04", at, s.Settings().Zone())
+					if err != nil {
+						return err
+					}
+					e.At = t
+				}
 				if err := s.Note(cmd.Context(), e); err != nil {
 					return err
 				}
@@ -131,7 +167,7 @@ func (a *app) note() *cobra.Command {
 	c.Flags().StringVar(&g.as, "as", "", "who logs it (required)")
 	c.Flags().StringVar(&resource, "resource", "", "the thing by name, e.g. E-35")
 	c.Flags().StringVar(&instrument, "instrument", "", "the instrument it concerns")
-	c.Flags().StringVar(&at, "at", "", "when, local time (default now)")
+	c.Flags().StringVar(&at, "at", "", "when, by the laboratory's clock (default now)")
 	return c
 }
 
@@ -236,7 +272,8 @@ func (a *app) schema() *cobra.Command {
 		Use: "schema [show|migrate|reader]", Short: "The database: version, migration, how dashboards connect", Args: cobra.MaximumNArgs(1),
 		Long: `show     the version of the schema (default)
 migrate  bring a database named by the settings up to date; a private server does it by itself
-reader   how a dashboard connects: role pkvigil_reader may read the schema readout and nothing else`,
+reader   how a dashboard connects: role pkvigil_reader may read the schema readout
+         and nothing else`,
 		Example: "  pkvigil schema\n  pkvigil schema migrate\n  pkvigil schema reader",
 		RunE: func(cmd *cobra.Command, args []string) error {
 			what := "show"

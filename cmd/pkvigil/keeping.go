@@ -29,6 +29,9 @@ sets of a design and says how often the stated 95 % interval holds the truth.`,
 		Args:    cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) error {
 			if coverage {
+				if sets < 1 || sets > 1_000_000 {
+					return &usageError{fmt.Errorf("--sets %d: expected 1 to 1000000", sets)}
+				}
 				return a.coverage(cmd, sets, seed)
 			}
 			if dir == "" {

@@ -65,7 +65,11 @@ func (a *app) serveUntil(ctx context.Context, cfg pipeline.Config) error {
 			defer stop()
 			fmt.Fprintf(a.err, "page on http://%s/\n", addr)
 		}
-		return s.Watch(ctx, func() { pipeline.NotifyReady() })
+		err := s.Watch(ctx, func() { pipeline.NotifyReady() })
+		if ctx.Err() != nil && errors.Is(err, context.Canceled) {
+			return nil // a service that is asked to stop has done its work
+		}
+		return err
 	})
 }
 
@@ -81,7 +85,7 @@ func (a *app) secondSignal() {
 func (a *app) once() *cobra.Command {
 	return &cobra.Command{
 		Use: "once", Short: "Work off what is there and exit",
-		Long:    "Takes in everything that stands in the folders as final, computes what is whole, names what is missing, and exits.",
+		Long:    "Takes in everything that stands in the folders as final, computes what is whole,\nnames what is missing, and exits.",
 		Example: "  pkvigil once --settings pkvigil.toml",
 		Args:    cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) error {
