@@ -19,6 +19,15 @@ func (s *Store) ResetRunningJobs(ctx context.Context) (int64, error) {
 	return tag.RowsAffected(), nil
 }
 
+// ResetLeases ends all leases on roots. Call it only where no other sweeper can
+// be: at the start of the one program that uses a private server.
+func (s *Store) ResetLeases(ctx context.Context) error {
+	if _, err := s.pool.Exec(ctx, `DELETE FROM pkvigil.root_lease`); err != nil {
+		return fmt.Errorf("ending the leases of an interrupted run: %w", safe(err))
+	}
+	return nil
+}
+
 // JobsOpen counts jobs of a queue that are not finished; queue "" means all.
 func (s *Store) JobsOpen(ctx context.Context, queue string) (int, error) {
 	var n int

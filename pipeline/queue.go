@@ -121,6 +121,12 @@ func (s *Service) openQueue(ctx context.Context) error {
 // startQueue gives back jobs that a dead worker of this machine left running
 // and begins to work.
 func (s *Service) startQueue(ctx context.Context) error {
+	if s.server != nil && s.cfg.Sweep {
+		// Nobody else can reach a private server, so a lease that still runs has lost its sweeper.
+		if err := s.store.ResetLeases(ctx); err != nil {
+			return err
+		}
+	}
 	if !s.cfg.Work {
 		return nil
 	}

@@ -2,7 +2,9 @@ package pipeline
 
 import (
 	"context"
+	"errors"
 	"fmt"
+	"io/fs"
 	"os"
 	"path/filepath"
 	"time"
@@ -25,6 +27,8 @@ type Replay struct {
 	Base     string // folder that holds the shares
 	From, To int    // nights, 1-based, both included
 	Progress func(Progress)
+
+	been time.Time // up to here an earlier run of the same replay came; zero: nowhere
 }
 
 // Progress is how far a replay is.
@@ -36,7 +40,9 @@ type Progress struct {
 }
 
 // Run plays the nights. The service must have been opened with clock, which
-// Run moves.
+// Run moves. A replay that was cut off goes on where the database says it was:
+// what had been written stands in the folders again, and the look it was cut
+// off after is taken once more.
 func (r Replay) Run(ctx context.Context, s *Service, clock *SetClock) error {
 	if err := s.startQueue(ctx); err != nil {
 		return err
@@ -45,9 +51,13 @@ func (r Replay) Run(ctx context.Context, s *Service, clock *SetClock) error {
 	if err := os.MkdirAll(truth, 0o755); err != nil {
 		return fmt.Errorf("folder for the truth: %w", err)
 	}
+	first, err := r.resume(ctx, s, clock)
+	if err != nil {
+		return err
+	}
 	start := time.Now()
 	files := 0
-	for n := r.From; n <= r.To; n++ {
+	for n := first; n <= r.To; n++ {
 		if r.Progress != nil {
 			r.Progress(Progress{Night: n, Of: r.To, Date: r.Story.Date(n), Files: files, Elapsed: time.Since(start)})
 		}
@@ -63,6 +73,39 @@ func (r Replay) Run(ctx context.Context, s *Service, clock *SetClock) error {
 	return nil
 }
 
+// resume finds out how far an earlier run came, moves the clock there and
+// gives the night to begin with: the one before, whose last files may have
+// come after noon.
+func (r *Replay) resume(ctx context.Context, s *Service, clock *SetClock) (int, error) {
+	roots, err := s.store.RootStates(ctx, nil)
+	if err != nil {
+		return 0, err
+	}
+	for _, st := range roots {
+		if st.LookedAt.After(r.been) {
+			r.been = st.LookedAt
+		}
+	}
+	if r.been.IsZero() {
+		return r.From, nil
+	}
+	for _, f := range rehearse.Folders() {
+		if err := rehearse.Remount(r.Base, f); err != nil {
+			return 0, err
+		}
+	}
+	clock.MoveTo(r.been)
+	return max(r.From, r.Story.NightOf(r.been)-1), nil
+}
+
+// step is one sweep at a moment, unless an earlier run has made it.
+func (r Replay) step(ctx context.Context, s *Service, clock *SetClock, at time.Time) error {
+	if at.Before(r.been) {
+		return nil
+	}
+	return s.step(ctx, clock, at)
+}
+
 // night plays one night: deposits in order, a sweep at least every step.
 func (r Replay) night(ctx context.Context, s *Service, clock *SetClock, deposits []rehearse.Deposit) error {
 	if len(deposits) == 0 {
@@ -71,7 +114,7 @@ func (r Replay) night(ctx context.Context, s *Service, clock *SetClock, deposits
 	next := deposits[0].At.Add(replayStep)
 	for i, d := range deposits {
 		for d.At.After(next) {
-			if err := s.step(ctx, clock, next); err != nil {
+			if err := r.step(ctx, s, clock, next); err != nil {
 				return err
 			}
 			next = next.Add(replayStep)
@@ -86,7 +129,7 @@ func (r Replay) night(ctx context.Context, s *Service, clock *SetClock, deposits
 		// A share that is away, a half-written file: the program gets a look at
 		// them before the next thing happens.
 		if look(d.Act) || (i+1 < len(deposits) && look(deposits[i+1].Act)) {
-			if err := s.step(ctx, clock, d.At.Add(time.Second)); err != nil {
+			if err := r.step(ctx, s, clock, d.At.Add(time.Second)); err != nil {
 				return err
 			}
 		}
@@ -98,8 +141,8 @@ func (r Replay) night(ctx context.Context, s *Service, clock *SetClock, deposits
 		return err
 	}
 	for _, at := range []time.Time{last.Add(10 * time.Minute), last.Add(45 * time.Minute), morning, morning.Add(4 * time.Hour)} {
-		if at.After(clock.Now()) {
-			if err := s.step(ctx, clock, at); err != nil {
+		if at.After(clock.Now()) || at.Equal(r.been) {
+			if err := r.step(ctx, s, clock, at); err != nil {
 				return err
 			}
 		}
@@ -118,7 +161,10 @@ func look(a rehearse.Act) bool {
 // act carries out one deposit.
 func (r Replay) act(ctx context.Context, s *Service, clock *SetClock, d rehearse.Deposit) error {
 	done, err := rehearse.Apply(r.Base, d)
-	if done || err != nil {
+	if d.Act == rehearse.Remove && !r.been.IsZero() && errors.Is(err, fs.ErrNotExist) {
+		return nil // an earlier run had removed it
+	}
+	if done || err != nil || d.At.Before(r.been) {
 		return err
 	}
 	switch d.Act {
@@ -127,7 +173,7 @@ func (r Replay) act(ctx context.Context, s *Service, clock *SetClock, d rehearse
 	case rehearse.DatabaseBack:
 		return s.restartServer(ctx)
 	case rehearse.Sign:
-		return s.replaySign(ctx, *d.Sign)
+		return s.replaySign(ctx, d.At, *d.Sign)
 	}
 	return nil
 }

@@ -67,6 +67,22 @@ func Apply(base string, d Deposit) (bool, error) {
 	return true, nil
 }
 
+// Remount brings a share back that a replay left away when it was cut off; a
+// share that is there stays as it is.
+func Remount(base, folder string) error {
+	root := filepath.Join(base, folder)
+	if _, err := os.Stat(root + awaySuffix); errors.Is(err, fs.ErrNotExist) {
+		return nil
+	}
+	if err := os.Remove(root); err != nil && !errors.Is(err, fs.ErrNotExist) {
+		return fmt.Errorf("rehearse: bringing share %s back: %w", folder, err)
+	}
+	if err := os.Rename(root+awaySuffix, root); err != nil {
+		return fmt.Errorf("rehearse: bringing share %s back: %w", folder, err)
+	}
+	return nil
+}
+
 // put writes bytes and sets the time the file claims.
 func put(path string, d Deposit) error {
 	if err := os.MkdirAll(filepath.Dir(path), 0o755); err != nil {
