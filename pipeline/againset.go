@@ -105,6 +105,9 @@ func walkNumbers(v any) any {
 		}
 	case json.Number:
 		if f, err := x.Float64(); err == nil {
+			if f == 0 {
+				return 0.0 // the database keeps no negative zero
+			}
 			return f
 		}
 	}

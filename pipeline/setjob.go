@@ -70,6 +70,7 @@ func (s *Service) computeSet(ctx context.Context, a job.Set, done func(context.C
 // used names what a computation read besides the members, so that it can be
 // repeated from the database alone.
 type used struct {
+	Closed        string             `json:"instrument_closed,omitempty"` // why the instrument was closed
 	SettingsID    int64              `json:"settings_id"`
 	CalibrationID int64              `json:"calibration_id,omitempty"`
 	ArchiveID     int64              `json:"archive_result_id,omitempty"`
@@ -106,6 +107,9 @@ func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *u
 	}
 	if first.IsZero() {
 		first = data.Set.FirstSeen
+	}
+	if err := s.closedFor(ctx, u, data); err != nil {
+		return nil, nil, err
 	}
 	if err := s.electrodeOf(ctx, in, u, data, first); err != nil {
 		return nil, nil, err
@@ -317,6 +321,7 @@ type record struct {
 
 // result states an outcome as rows.
 func (s *Service) result(ctx context.Context, data *db.SetData, in *assay.Input, u *used, out *assay.Outcome, at time.Time) (*db.Result, error) {
+	closeReport(out, data.Set.Instrument, u.Closed)
 	rec, err := recordOf(in, u, out)
 	if err != nil {
 		return nil, err
@@ -499,6 +504,9 @@ func (s *Service) inputHash(ctx context.Context, data *db.SetData, u *used, ex [
 		return [32]byte{}, err
 	}
 	fmt.Fprintf(&b, "settings %s electrode %s exchange %v buffers %v\n", settings.Hash(text), u.Electrode, ex, u.Corrections)
+	if u.Closed != "" {
+		fmt.Fprintf(&b, "instrument closed: %s\n", u.Closed)
+	}
 	if u.CalibrationID != 0 {
 		c, err := s.store.CalibrationByID(ctx, nil, u.CalibrationID)
 		if err != nil {

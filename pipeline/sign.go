@@ -53,7 +53,7 @@ func Verbs() [][2]string {
 		{actLift, "RESULT or SET        the hold does not matter; it may be released"},
 		{actRelease, "RESULT, SET or night:2026-09-14   send it out"},
 		{actStrike, "RESULT or SET        withdraw it, for good"},
-		{actConfirm, "CASE RESULT          this result is unaffected by the case"},
+		{actConfirm, "CASE RESULT          this result is unaffected by the case; BRACKET RESULT for a failed bracket"},
 		{actAffected, "CASE RESULT          this result is affected by the case"},
 		{actExchange, "SET RUNG RUNG        labels were exchanged; compute again, both versions stay"},
 		{actBaseline, "REFERENCE FROM TO    learn the baseline anew from these nights (YYYY-MM-DD)"},
@@ -230,6 +230,9 @@ func (s *Service) signReach(ctx context.Context, tx pgx.Tx, g Signature, d *db.D
 	if len(g.Object) < 2 {
 		return "", errors.New("name the case and the result: pkvigil sign " + g.Verb + " CASE RESULT ...")
 	}
+	if said, ok, err := s.signBracket(ctx, tx, g, d); ok || err != nil {
+		return said, err
+	}
 	c, err := s.findCase(ctx, tx, g.Object[0])
 	if err != nil {
 		return "", err
@@ -368,7 +371,11 @@ func (s *Service) signReopen(ctx context.Context, tx pgx.Tx, g Signature, d *db.
 		return "", fmt.Errorf("instrument %q was never closed: %w", g.Object[0], ErrUnknownObject)
 	}
 	d.Before, d.After = st.State, "open"
-	return "instrument " + g.Object[0] + " is open", s.store.PutInstrumentState(ctx, tx, db.InstrumentState{Instrument: g.Object[0], State: "open", At: d.At, Actor: g.As, Because: g.Because})
+	more, err := s.afterReopen(ctx, tx, st, d)
+	if err != nil {
+		return "", err
+	}
+	return "instrument " + g.Object[0] + " is open" + more, s.store.PutInstrumentState(ctx, tx, db.InstrumentState{Instrument: g.Object[0], State: "open", At: d.At, Actor: g.As, Because: g.Because})
 }
 
 // replaySign carries out a scripted signature of the demo. What it names may

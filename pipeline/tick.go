@@ -36,9 +36,15 @@ func (s *Service) Tick(ctx context.Context, now time.Time) error {
 		if err := s.evaluate(ctx, now); err != nil {
 			return fmt.Errorf("evaluating the references: %w", err)
 		}
+		if err := s.brackets(ctx, now); err != nil {
+			return err
+		}
 	}
 	if err := s.tickAbsence(ctx, now); err != nil {
 		return fmt.Errorf("looking for what is absent: %w", err)
+	}
+	if err := s.tickUnrun(ctx, now); err != nil {
+		return fmt.Errorf("looking for references not run: %w", err)
 	}
 	if busy == 0 {
 		if err := s.tickBrief(ctx, now); err != nil {
