@@ -158,8 +158,8 @@ type Characteristics struct {
 	LambdaAcid, LambdaAcidSD float64 // nm, strongest band of the acid form (nearest the nominal one if given)
 	LambdaBase, LambdaBaseSD float64 // nm
 	LambdaIso, LambdaIsoSD   float64 // nm
-	LnRA, LnRASD             float64 // ln(acid form at nominal acid wavelength / mean of the forms at nominal isosbestic wavelength)
-	LnRB, LnRBSD             float64 // ln(base form at nominal base wavelength / the same)
+	LnRA, LnRASD             float64 // ln(acid form at nominal acid wavelength / acid form at nominal isosbestic wavelength)
+	LnRB, LnRBSD             float64 // ln(base form at nominal base wavelength / base form at nominal isosbestic wavelength)
 	LnAIso, LnAIsoSD         float64 // ln of the mean absorbance of the forms at the nominal isosbestic wavelength
 	IsoTilt                  float64 // (base - acid)/mean at the nominal isosbestic wavelength: the slope across the ladder that a scale shift gives
 	Used                     Nominal // wavelengths read at
@@ -223,11 +223,13 @@ func (c *Characteristics) ratios(x, acid, base, sdAcid, sdBase []float64) {
 	uIso := math.Hypot(ua, ub) / 2 / iso
 	c.LnAIso, c.LnAIsoSD = math.Log(iso), uIso
 	c.IsoTilt = (ib - ia) / iso
-	if v, u := valueAt(x, acid, sdAcid, c.Used.AcidNM); v > 0 {
-		c.LnRA, c.LnRASD = math.Log(v/iso), math.Hypot(u/v, uIso)
+	// Each form over itself: a displaced scale moves the two in opposite
+	// directions, which the mean of the forms would hide.
+	if v, u := valueAt(x, acid, sdAcid, c.Used.AcidNM); v > 0 && ia > 0 {
+		c.LnRA, c.LnRASD = math.Log(v/ia), math.Hypot(u/v, ua/ia)
 	}
-	if v, u := valueAt(x, base, sdBase, c.Used.BaseNM); v > 0 {
-		c.LnRB, c.LnRBSD = math.Log(v/iso), math.Hypot(u/v, uIso)
+	if v, u := valueAt(x, base, sdBase, c.Used.BaseNM); v > 0 && ib > 0 {
+		c.LnRB, c.LnRBSD = math.Log(v/ib), math.Hypot(u/v, ub/ib)
 	}
 }
 
