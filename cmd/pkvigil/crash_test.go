@@ -36,16 +36,18 @@ const (
 	crashNights = 2
 )
 
-// TestMain lets the test binary be the program that the rounds kill.
-func TestMain(m *testing.M) {
-	if dir := os.Getenv(crashDir); dir != "" {
-		if err := replayUntilDone(dir); err != nil {
-			fmt.Fprintln(os.Stderr, err)
-			os.Exit(1)
-		}
-		os.Exit(0)
+// beKilled makes the test binary the program that the rounds kill, when it was
+// started for that; see TestMain.
+func beKilled() {
+	dir := os.Getenv(crashDir)
+	if dir == "" {
+		return
 	}
-	os.Exit(dbtest.Main(m))
+	if err := replayUntilDone(dir); err != nil {
+		fmt.Fprintln(os.Stderr, err)
+		os.Exit(1)
+	}
+	os.Exit(0)
 }
 
 // An ending is what a replay leaves behind when it came to its end.

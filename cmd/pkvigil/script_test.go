@@ -31,6 +31,7 @@ type withServer struct{ m *testing.M }
 func (w withServer) Run() int { return dbtest.Main(w.m) }
 
 func TestMain(m *testing.M) {
+	beKilled()
 	testscript.Main(withServer{m}, map[string]func(){"pkvigil": main})
 }
 
