@@ -111,6 +111,7 @@ func (r Replay) night(ctx context.Context, s *Service, clock *SetClock, deposits
 	if len(deposits) == 0 {
 		return nil
 	}
+	written := map[string]time.Time{}
 	next := deposits[0].At.Add(replayStep)
 	for i, d := range deposits {
 		for d.At.After(next) {
@@ -121,6 +122,18 @@ func (r Replay) night(ctx context.Context, s *Service, clock *SetClock, deposits
 			if gap := d.At.Sub(next); gap > 2*replayStep {
 				next = next.Add(gap - gap%replayStep - replayStep)
 			}
+		}
+		// What is written over was there to be seen: a sweep every few seconds
+		// would have taken it in.
+		if key := d.Folder + "/" + d.Path; d.Act == rehearse.Write {
+			if at, ok := written[key]; ok && clock.Now().Sub(at) < 2*replayStep {
+				for _, before := range []time.Duration{20 * time.Second, time.Second} {
+					if err := s.step(ctx, clock, d.At.Add(-before)); err != nil {
+						return err
+					}
+				}
+			}
+			written[key] = d.At
 		}
 		clock.MoveTo(d.At)
 		if err := r.act(ctx, s, clock, d); err != nil {
