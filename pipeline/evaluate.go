@@ -189,6 +189,11 @@ func (s *Service) cell(ctx context.Context, set *settings.Settings, ts []*track,
 	if one.ScopeKind == db.ScopeElectrode {
 		c.Kind, c.Instrument, c.Key, c.Title = drift.ElectrodeCell, "", "electrode/"+one.Scope, "calibrations of electrode "+one.Scope
 		need = 2 // a calibration a week: waiting for five would cost a month
+		buffers, err := s.buffersOf(ctx, one.Scope)
+		if err != nil {
+			return nil, nil, err
+		}
+		c.Design = &drift.Design{Buffers: buffers}
 	}
 	var use []*track
 	for _, t := range ts {
@@ -217,6 +222,37 @@ func (s *Service) cell(ctx context.Context, set *settings.Settings, ts []*track,
 	}
 	c.Cov = s.covariance(c, use)
 	return c, observations(c.Key, use, k, first), nil
+}
+
+// buffersOf gives the low, mid and high buffer of the newest calibration of an electrode.
+func (s *Service) buffersOf(ctx context.Context, electrode string) ([]float64, error) {
+	cals, err := s.store.CalibrationsOf(ctx, nil, electrode, time.Time{})
+	if err != nil {
+		return nil, err
+	}
+	for _, c := range slices.Backward(cals) {
+		var ph []float64
+		for _, p := range c.Points {
+			ph = append(ph, p.PH)
+		}
+		if b := threeBuffers(ph); len(b) == 3 {
+			return b, nil
+		}
+	}
+	return []float64{4.005, 6.865, 10.012}, nil
+}
+
+// threeBuffers picks the low, mid and high buffer of a calibration.
+func threeBuffers(ph []float64) []float64 {
+	var out []float64
+	for _, role := range []string{"low", "mid", "high"} {
+		for i := range ph {
+			if bufferRole(ph, i) == role {
+				out = append(out, ph[i])
+			}
+		}
+	}
+	return out
 }
 
 // charted says whether a characteristic speaks about causes.
@@ -336,13 +372,7 @@ func (s *Service) design(ctx context.Context, set *settings.Settings, one db.Ser
 				continue
 			}
 			if el, err := assay.Calibrate(&cal.Calibration); err == nil {
-				for _, role := range []string{"low", "mid", "high"} {
-					for i, p := range el.Points {
-						if bufferRole(phOf(el.Points), i) == role {
-							d.Buffers = append(d.Buffers, p.PH)
-						}
-					}
-				}
+				d.Buffers = threeBuffers(phOf(el.Points))
 			}
 		}
 	}
