@@ -139,7 +139,12 @@ func (s *Service) model(cells []drift.Cell, nights float64) (*drift.Model, error
 	s.cacheMu.Lock()
 	defer s.cacheMu.Unlock()
 	if s.lastModel == nil || !bytes.Equal(key, s.lastCells) {
-		m, err := drift.NewModel(cells, drift.Rules{FalseAlarmNights: nights, CalibrationPH: calibrationPH}, drift.Weighted)
+		var m *drift.Model
+		if s.lastModel != nil {
+			m, err = s.lastModel.Renew(cells, drift.Weighted)
+		} else {
+			m, err = drift.NewModel(cells, drift.Rules{FalseAlarmNights: nights, CalibrationPH: calibrationPH}, drift.Weighted)
+		}
 		if err != nil {
 			return nil, err
 		}
