@@ -162,10 +162,10 @@ func (s *Store) Gauges(ctx context.Context, now time.Time) (map[string]map[strin
 }
 
 // NightLines gives one line per set of a night: its key and what it amounts
-// to now, sorted. Two equal answers mean that nothing has changed for people.
+// to now, sorted; a set that is on its way waits. Two equal answers mean that nothing has changed for people.
 func (s *Store) NightLines(ctx context.Context, night string) ([]string, error) {
 	rows, err := s.pool.Query(ctx, `
-		SELECT s.key || ' ' || coalesce(st.verdict || coalesce(' ' || round(p.pka::numeric, 3)::text, ''), s.state)
+		SELECT s.key || ' ' || coalesce(st.verdict || coalesce(' ' || round(p.pka::numeric, 3)::text, ''), CASE WHEN s.state IN ('gathering', 'complete') THEN 'waiting' ELSE s.state END)
 		FROM pkvigil.sample_set s
 		LEFT JOIN pkvigil.standing st ON st.set_id = s.id AND st.current
 		LEFT JOIN pkvigil.result_pka p ON p.result_id = st.result_id AND p.step = 1
