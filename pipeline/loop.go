@@ -112,6 +112,9 @@ func (s *Service) tickLoop(ctx context.Context) {
 		if ctx.Err() == nil {
 			s.once.note(s.log, "the clockwork", err)
 		}
+		if err == nil && !s.cfg.Sweep {
+			beat() // a process that only computes stores no looks
+		}
 		select {
 		case <-ctx.Done():
 			return
@@ -143,7 +146,11 @@ func (s *Service) handle(ctx context.Context, r watcher.Report) {
 		s.log.Info().Int("taken", got.Taken).Int("twin", got.Twin).Int("parked", got.Parked).Int("refused", got.Refused).Msg("files")
 	}
 	if err == nil {
-		s.once.note(s.log, "recording the state of the folders", s.putStates(ctx, r))
+		err = s.putStates(ctx, r)
+		s.once.note(s.log, "recording the state of the folders", err)
+		if err == nil {
+			beat()
+		}
 	}
 }
 

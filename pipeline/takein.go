@@ -147,6 +147,9 @@ func (s *Service) takeBatch(ctx context.Context, items []*item) (TakenIn, error)
 		got, err = s.takeInTx(ctx, tx, items, true)
 		return err
 	})
+	if err == nil && len(items) > 0 {
+		beat() // a backlog keeps a look busy for long
+	}
 	if err == nil || db.Away(err) || ctx.Err() != nil || len(items) == 0 {
 		return got, err
 	}

@@ -49,6 +49,7 @@ func (a *app) serveUntil(ctx context.Context, cfg pipeline.Config) error {
 			for {
 				select {
 				case <-ctx.Done():
+					pipeline.NotifyStopping()
 					a.secondSignal()
 					return
 				case <-hup:

@@ -152,7 +152,8 @@ func shortDir(t *testing.T) string {
 // TestNight rehearses one night into a fresh database on the test server,
 // works it off, and lets the scripts and the dashboards' queries ask about it.
 func TestNight(t *testing.T) {
-	dsn := dbtest.URL(t)
+	admin := dbtest.NewEmpty(t).Pool().Config().ConnString()
+	owner, service := roles(t, admin)
 	dir := t.TempDir()
 	ctx := t.Context()
 	call := func(args ...string) string {
@@ -168,17 +169,109 @@ func TestNight(t *testing.T) {
 	}
 	file := filepath.Join(dir, "pkvigil.toml")
 	onServer(t, file)
-	t.Setenv("PKVIGIL_TEST_URL", dsn)
+	t.Setenv("PKVIGIL_TEST_URL", owner)
+	if out := call("schema", "migrate", "-s", file); !strings.Contains(out, "schema 0 -> ") {
+		t.Errorf("migrating says %q", out)
+	}
+	t.Setenv("PKVIGIL_TEST_URL", service)
 	table := call("once", "-s", file)
 	if !regexp.MustCompile(`2026-09-14\s+U1\s+12\s+12`).MatchString(table) {
 		t.Errorf("not every planned set of U1 was seen:\n%s", table)
 	}
-	t.Run("queries", func(t *testing.T) { askAll(t, dsn) })
+	t.Run("queries", func(t *testing.T) { askAll(t, admin) })
 	t.Run("scripts", func(t *testing.T) {
 		testscript.Run(t, params(t, []string{"testdata/night.txtar"}, map[string]string{
-			"PKVIGIL_SETTINGS": file, "PKVIGIL_TEST_URL": dsn, "DIR": dir,
+			"PKVIGIL_SETTINGS": file, "PKVIGIL_TEST_URL": service, "DIR": dir,
 		}))
 	})
+	t.Run("backup", func(t *testing.T) { backup(t, admin, file) })
+}
+
+// roles runs deploy/roles.sql and gives the addresses of owner and service.
+func roles(t *testing.T, admin string) (owner, service string) {
+	t.Helper()
+	sql, err := os.ReadFile("../../deploy/roles.sql")
+	if err != nil {
+		t.Fatal(err)
+	}
+	c, err := pgx.Connect(t.Context(), admin)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer c.Close(context.Background())
+	for range 2 { // a second time changes nothing
+		if _, err := c.PgConn().Exec(t.Context(), string(sql)).ReadAll(); err != nil {
+			t.Fatalf("deploy/roles.sql: %v", err)
+		}
+	}
+	// The private server lets only its own account and readers in: the role is
+	// taken at the start of each session, with its rights and no others.
+	as := func(role string) string {
+		u, err := url.Parse(admin)
+		if err != nil {
+			t.Fatal(err)
+		}
+		q := u.Query()
+		q.Set("role", role)
+		u.RawQuery = q.Encode()
+		return u.String()
+	}
+	t.Cleanup(func() {
+		c, err := pgx.Connect(context.Background(), admin)
+		if err != nil {
+			t.Error(err)
+			return
+		}
+		defer c.Close(context.Background())
+		for _, sql := range []string{"drop owned by pkvigil_service, pkvigil_owner cascade", "drop role pkvigil_service, pkvigil_owner"} {
+			if _, err := c.Exec(context.Background(), sql); err != nil {
+				t.Error(err)
+			}
+		}
+	})
+	return as("pkvigil_owner"), as("pkvigil_service")
+}
+
+// backup dumps the night, restores it into an empty database, and asks whether
+// the trail is intact and the digits are the same.
+func backup(t *testing.T, admin, file string) {
+	if _, err := exec.LookPath("pg_dump"); err != nil {
+		if found, _ := filepath.Glob("/usr/lib/postgresql/*/bin/pg_dump"); len(found) == 0 {
+			t.Skip("pg_dump is not installed")
+		}
+	}
+	empty := dbtest.NewEmpty(t).Pool().Config().ConnString()
+	script := func(name, at string, args ...string) string {
+		t.Helper()
+		c, err := pgx.ParseConfig(at)
+		if err != nil {
+			t.Fatal(err)
+		}
+		cmd := exec.Command("../../deploy/"+name, args...)
+		cmd.Env = append(os.Environ(), "PGHOST="+c.Host, "PGPORT="+strconv.Itoa(int(c.Port)), "PGUSER="+c.User, "PGPASSWORD="+c.Password, "PGDATABASE="+c.Database)
+		out, err := cmd.CombinedOutput()
+		if err != nil {
+			t.Fatalf("deploy/%s: %v\n%s", name, err, out)
+		}
+		return string(out)
+	}
+	dir := t.TempDir()
+	said := script("backup.sh", admin, dir)
+	dump, _, ok := strings.Cut(said, ": ")
+	if !ok || !strings.HasSuffix(dump, ".dump") {
+		t.Fatalf("backup.sh says %q", said)
+	}
+	said = script("restore.sh", empty, dump)
+	if !regexp.MustCompile(`(?m)^results [1-9]\d*$`).MatchString(said) {
+		t.Errorf("restore.sh says %q", said)
+	}
+	t.Setenv("PKVIGIL_TEST_URL", empty)
+	for _, args := range [][]string{{"deeds"}, {"again", "--all"}} {
+		var out, errs bytes.Buffer
+		if code := run(t.Context(), append(args, "-s", file), &out, &errs); code != exitOK {
+			t.Errorf("after the restore, pkvigil %s: exit code %d\n%s%s", strings.Join(args, " "), code, out.String(), errs.String())
+		}
+	}
 }
 
 // onServer points a settings file at the server that the environment names.
@@ -206,23 +299,17 @@ func asReader(t *testing.T, dsn string) *pgx.Conn {
 		t.Fatal(err)
 	}
 	defer admin.Close(t.Context())
-	if _, err := admin.Exec(t.Context(), "create role dashboard_test login in role pkvigil_reader"); err != nil {
+	if _, err := admin.Exec(t.Context(), "create role dashboard_test login password 'for dashboards' in role pkvigil_reader"); err != nil {
 		t.Fatal(err)
 	}
 	u, err := url.Parse(dsn)
 	if err != nil {
 		t.Fatal(err)
 	}
-	u.User = url.User("dashboard_test")
+	u.User = url.UserPassword("dashboard_test", "for dashboards")
 	conn, err := pgx.Connect(t.Context(), u.String())
 	if err != nil {
-		// The private server may ask for a password: take the reader's rights in a session instead.
-		if conn, err = pgx.Connect(t.Context(), dsn); err != nil {
-			t.Fatal(err)
-		}
-		if _, err := conn.Exec(t.Context(), "set session authorization dashboard_test"); err != nil {
-			t.Fatal(err)
-		}
+		t.Fatal(err)
 	}
 	t.Cleanup(func() {
 		conn.Close(context.Background())
