@@ -45,7 +45,9 @@ func (s *Store) PutCase(ctx context.Context, tx pgx.Tx, c *Case) (changed bool, 
 	if c.OpenedAt.IsZero() {
 		c.OpenedAt = c.At
 	}
-	_, err = tx.Exec(ctx, `insert into drift_case (key, resource, instrument, opened_at) values ($1, $2, $3, $4) on conflict (key) do nothing`,
+	// A conflict would use up a number, and people name cases by theirs.
+	_, err = tx.Exec(ctx, `insert into drift_case (key, resource, instrument, opened_at)
+		select $1, $2, $3, $4 where not exists (select from drift_case where key = $1) on conflict (key) do nothing`,
 		c.Key, c.Resource, c.Instrument, c.OpenedAt)
 	if err != nil {
 		return false, fmt.Errorf("opening case %s: %w", c.Key, err)
