@@ -133,14 +133,18 @@ type Since struct {
 	Unit           string     `json:"unit"`
 	Rows           []SinceRow `json:"rows"`
 	Cases          []db.Case  `json:"cases"`
+	Exits          []Exit     `json:"exits,omitempty"` // of an electrode: when it leaves its limits
 }
 
 // Since gathers the chart of a reference or electrode.
 func (s *Service) Since(ctx context.Context, reference, characteristic string) (*Since, error) {
-	if characteristic == "" {
-		characteristic = string(drift.PKa)
-	}
 	now := s.clock.Now()
+	if characteristic == "" {
+		var err error
+		if characteristic, err = s.usualOf(ctx, reference); err != nil {
+			return nil, err
+		}
+	}
 	points, err := s.store.JudgedHistory(ctx, nil, db.PointFilter{Characteristic: characteristic}, now)
 	if err != nil {
 		return nil, err
@@ -160,7 +164,10 @@ func (s *Service) Since(ctx context.Context, reference, characteristic string) (
 	if len(out.Rows) == 0 {
 		return nil, fmt.Errorf("no %s is charted for %q: %w", characteristic, reference, ErrUnknownObject)
 	}
-	out.Cases, err = s.store.OpenCases(ctx, nil)
+	if out.Cases, err = s.store.OpenCases(ctx, nil); err != nil {
+		return nil, err
+	}
+	out.Exits, err = s.exitsOf(ctx, nil, reference, now)
 	return out, err
 }
 

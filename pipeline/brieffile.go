@@ -146,7 +146,7 @@ func differences(before, after string) []string {
 func (s *Service) BriefData(ctx context.Context, night string, now time.Time) (*brief.Data, error) {
 	cfg, _, id := s.current()
 	d := &brief.Data{Laboratory: cfg.Laboratory.Name, Night: night, Made: now.In(cfg.Zone()), Revision: 1, Program: Program(), Settings: fmt.Sprint(id)}
-	for _, f := range []func(context.Context, *brief.Data, time.Time) error{s.briefCounts, s.briefSets, s.briefAbsent, s.briefCases, s.briefCharts, s.briefBrackets, s.briefFiles} {
+	for _, f := range []func(context.Context, *brief.Data, time.Time) error{s.briefCounts, s.briefSets, s.briefAbsent, s.briefCases, s.briefCharts, s.briefBrackets, s.briefForecasts, s.briefFiles} {
 		if err := f(ctx, d, now); err != nil {
 			return nil, err
 		}

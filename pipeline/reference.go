@@ -81,6 +81,9 @@ func (s *Service) calibrated(ctx context.Context, tx pgx.Tx, it *item, now time.
 			fig.SlopeBasePct = el.Segments[mid].Percent
 		}
 		fig.ThirdBufferResidual = el.Residual[mid]
+		if err := s.foresee(ctx, tx, c, &fig); err != nil {
+			return err
+		}
 		if err := s.store.PutCalibrationFigures(ctx, tx, id, fig, now); err != nil {
 			return err
 		}
@@ -311,17 +314,9 @@ func (s *Service) chartRules(c settings.Charts, charts int) (chart.Rules, error)
 	if s.rulesKey == key {
 		return s.chartDesign, nil
 	}
-	kinds := chart.DefaultRules()
-	if c.Multirule {
-		kinds.Runs = chart.Multirule()
-	}
-	nights := c.FalseAlarmNights
-	if nights <= 0 {
-		nights = 365
-	}
-	rules, _, err := chart.LimitsFor(nights, charts, kinds)
+	rules, _, err := designed(c, charts)
 	if err != nil {
-		return rules, fmt.Errorf("chart limits for one false alarm in %g nights over %d charts: %w", nights, charts, err)
+		return rules, err
 	}
 	s.chartDesign, s.rulesKey = rules, key
 	return rules, nil

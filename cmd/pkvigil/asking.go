@@ -206,6 +206,9 @@ func saySince(out io.Writer, v *pipeline.Since) {
 		}
 		fmt.Fprintf(out, "%s %-6s %-5s %10.4f  %s %s%s\n", r.Night, r.Instrument, r.Slot, r.Value, strip(r), strings.Join(r.Flags, "; "), mark)
 	}
+	for _, x := range v.Exits {
+		fmt.Fprintf(out, "%s (limits %.4g to %.4g)\n", x.Sentence(), x.Low, x.High)
+	}
 	for _, c := range v.Cases {
 		fmt.Fprintf(out, "open case %d: %s\n", c.ID, c.Sentence)
 	}
