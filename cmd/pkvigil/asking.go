@@ -178,11 +178,26 @@ func sayTrace(out io.Writer, t *pipeline.Trace) {
 
 func (a *app) since() *cobra.Command {
 	var what string
+	var design, scatter bool
 	c := &cobra.Command{
 		Use: "since REFERENCE", Short: "The chart of a reference or electrode, night by night", Args: one("reference, instrument/reference or electrode"),
-		Example: "  pkvigil since RI-C\n  pkvigil since U1/RI-C --of lambda_base\n  pkvigil since E-31 --of electrode_slope_base",
+		Example: "  pkvigil since RI-C\n  pkvigil since U1/RI-C --of lambda_base\n  pkvigil since E-31 --of electrode_slope_base\n  pkvigil since RI-C --design\n  pkvigil since U1 --scatter",
 		RunE: func(cmd *cobra.Command, args []string) error {
 			return a.with(cmd.Context(), pipeline.Config{ReadOnly: true}, func(s *pipeline.Service) error {
+				switch {
+				case design:
+					v, err := s.Design(cmd.Context(), args[0])
+					if err != nil {
+						return err
+					}
+					return a.print(v, func(out io.Writer) { fmt.Fprint(out, v.Text()) })
+				case scatter:
+					v, err := s.Scatter(cmd.Context(), args[0])
+					if err != nil {
+						return err
+					}
+					return a.print(v, func(out io.Writer) { fmt.Fprint(out, v.Text()) })
+				}
 				v, err := s.Since(cmd.Context(), args[0], what)
 				if err != nil {
 					return err
@@ -191,7 +206,9 @@ func (a *app) since() *cobra.Command {
 			})
 		},
 	}
-	c.Flags().StringVar(&what, "of", "", "characteristic (default pka)")
+	c.Flags().StringVar(&what, "of", "", "characteristic (default pka; of an electrode electrode_slope_acid)")
+	c.Flags().BoolVar(&design, "design", false, "run lengths of its charts as set, in and out of control")
+	c.Flags().BoolVar(&scatter, "scatter", false, "of an instrument: scatter of readings and amounts from its reference sets, beside what is declared")
 	return c
 }
 
