@@ -126,7 +126,7 @@ strong acids and bases, solvents and UV lamps asks for the usual protection.`,
 		c.GroupID = "decide"
 		root.AddCommand(c)
 	}
-	for _, c := range []*cobra.Command{a.again(), a.deeds(), a.schema(), a.rehearse()} {
+	for _, c := range []*cobra.Command{a.again(), a.deeds(), a.schema(), a.rehearse(), a.verify()} {
 		c.GroupID = "keep"
 		root.AddCommand(c)
 	}
