@@ -132,6 +132,7 @@ func (s *Service) handle(ctx context.Context, r watcher.Report) {
 		return
 	}
 	s.once.note(s.log, "taking files in", err)
+	s.once.begun(s.log, "files that cannot be taken yet", waits(r))
 	away := err != nil && db.Away(err)
 	s.dbAway.Store(away)
 	switch now := s.clock.Now(); {
@@ -152,6 +153,16 @@ func (s *Service) handle(ctx context.Context, r watcher.Report) {
 			beat()
 		}
 	}
+}
+
+// waits says why files that stand in the folders cannot be taken yet: empty,
+// locked, growing for long, links.
+func waits(r watcher.Report) map[string]string {
+	out := map[string]string{}
+	for _, w := range r.Waits {
+		out[w.Root+"/"+w.Path] = w.Why
+	}
+	return out
 }
 
 // leased keeps the files of roots this process may sweep: one sweeper per root.

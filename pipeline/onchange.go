@@ -1,6 +1,8 @@
 package pipeline
 
 import (
+	"maps"
+	"slices"
 	"sync"
 
 	"github.com/rs/zerolog"
@@ -11,6 +13,24 @@ import (
 type onChange struct {
 	mu   sync.Mutex
 	last map[string]string
+	open map[string]map[string]bool // of begun: group -> what is present
+}
+
+// begun logs each thing of a group once when it is there, whatever becomes of
+// its text, and again only after it was gone.
+func (o *onChange) begun(log zerolog.Logger, group string, present map[string]string) {
+	o.mu.Lock()
+	defer o.mu.Unlock()
+	now := make(map[string]bool, len(present))
+	for _, what := range slices.Sorted(maps.Keys(present)) {
+		if now[what] = true; !o.open[group][what] {
+			log.Warn().Str("what", what).Str("group", group).Msg(present[what])
+		}
+	}
+	if o.open == nil {
+		o.open = map[string]map[string]bool{}
+	}
+	o.open[group] = now
 }
 
 func (o *onChange) note(log zerolog.Logger, what string, err error) {

@@ -408,8 +408,8 @@ func TestLimitsOverride(t *testing.T) {
 		t.Errorf("slope 1.04 is %s under a limit of 0.1", o)
 	}
 	off := Judge(f, Limits{"slope": {Off: true}, "blank": {Off: true}})
-	if slices.ContainsFunc(off.Checks, func(c Check) bool { return c.Key == "slope" }) || off.Verdict != Stands {
-		t.Errorf("a check that is switched off is made: %s", off.Verdict)
+	if c := find(t, off, "slope"); c.Outcome != Stands || !strings.Contains(c.Sentence, "switched off") || off.Verdict != Stands {
+		t.Errorf("a check that is switched off: %+v, the set is %s", c, off.Verdict)
 	}
 	f.MissingBlank = true
 	if r := Judge(f, Limits{"blank": {Off: true}, "slope": {Off: true}}); r.Verdict != Stands {
