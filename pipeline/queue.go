@@ -30,6 +30,9 @@ type setWorker struct {
 // Work computes the set and records the outcome and the end of the job in one transaction.
 func (w *setWorker) Work(ctx context.Context, j *river.Job[job.Set]) (err error) {
 	defer fence(&err, fmt.Sprintf("set %d", j.Args.SetID))
+	if err := w.s.awaitReferences(ctx, j.Args); err != nil {
+		return err
+	}
 	return w.s.computeSet(ctx, j.Args, func(ctx context.Context, tx pgx.Tx) error {
 		_, err := river.JobCompleteTx[*riverpgxv5.Driver](ctx, tx, j)
 		return err
@@ -156,7 +159,15 @@ func (s *Service) startQueue(ctx context.Context) error {
 
 // enqueueSet asks for a set to be computed, within the transaction of what it is about.
 func (s *Service) enqueueSet(ctx context.Context, tx pgx.Tx, a job.Set) error {
-	_, err := s.queue.InsertTx(ctx, tx, a, &river.InsertOpts{Queue: job.QueueSets, UniqueOpts: river.UniqueOpts{ByArgs: true}})
+	x, err := s.store.SetByID(ctx, tx, a.SetID)
+	if err != nil {
+		return err
+	}
+	priority := 1 // references first: samples lean on them
+	if x.Kind == db.KindSample {
+		priority = 2
+	}
+	_, err = s.queue.InsertTx(ctx, tx, a, &river.InsertOpts{Queue: job.QueueSets, Priority: priority, UniqueOpts: river.UniqueOpts{ByArgs: true}})
 	return err
 }
 

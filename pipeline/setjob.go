@@ -40,6 +40,9 @@ func (s *Service) computeSet(ctx context.Context, a job.Set, done func(context.C
 		return fmt.Errorf("set %s: %w", data.Set.Key, err)
 	}
 	out := assay.Compute(*in)
+	if err := s.findAnchor(ctx, in, used, data, out); err != nil {
+		return fmt.Errorf("set %s: %w", data.Set.Key, err)
+	}
 	res, err := s.result(ctx, data, in, used, out, a.At)
 	if err != nil {
 		return fmt.Errorf("set %s: %w", data.Set.Key, err)
@@ -71,6 +74,7 @@ func (s *Service) computeSet(ctx context.Context, a job.Set, done func(context.C
 // repeated from the database alone.
 type used struct {
 	Closed        string             `json:"instrument_closed,omitempty"` // why the instrument was closed
+	AnchorID      int64              `json:"anchor_result_id,omitempty"`
 	SettingsID    int64              `json:"settings_id"`
 	CalibrationID int64              `json:"calibration_id,omitempty"`
 	ArchiveID     int64              `json:"archive_result_id,omitempty"`
@@ -360,6 +364,9 @@ func (s *Service) result(ctx context.Context, data *db.SetData, in *assay.Input,
 	r.Checks = checks(out.Report)
 	if out.Fit != nil && len(out.Constants) > 0 {
 		numbers(r, in, out)
+		if err := s.anchor(ctx, r, in.Compound, u.AnchorID); err != nil {
+			return nil, err
+		}
 	} else if r.Verdict != db.NoNumber {
 		return nil, errors.New("a verdict without a number")
 	}
@@ -504,6 +511,13 @@ func (s *Service) inputHash(ctx context.Context, data *db.SetData, u *used, ex [
 		return [32]byte{}, err
 	}
 	fmt.Fprintf(&b, "settings %s electrode %s exchange %v buffers %v\n", settings.Hash(text), u.Electrode, ex, u.Corrections)
+	if u.AnchorID != 0 {
+		sum, err := s.store.InputOf(ctx, u.AnchorID)
+		if err != nil {
+			return [32]byte{}, err
+		}
+		fmt.Fprintf(&b, "anchor %x\n", sum)
+	}
 	if u.Closed != "" {
 		fmt.Fprintf(&b, "instrument closed: %s\n", u.Closed)
 	}

@@ -57,6 +57,9 @@ func sayWhy(out io.Writer, w *pipeline.Why) {
 		if !math.IsNaN(r.TemperatureC) {
 			fmt.Fprintf(out, ", cell %.1f °C", r.TemperatureC)
 		}
+		if p.AnchoredTo != "" {
+			fmt.Fprintf(out, "\n       anchored to %s: %.4f ± %.4f (k = %.2g)", p.AnchoredTo, p.Anchored, p.K*p.UAnchored, p.K)
+		}
 		fmt.Fprintf(out, "\n       u: own %.4f, run %.4f, laboratory %.4f", p.UOwn, p.URun, p.ULab)
 		if !math.IsNaN(p.Thermo) {
 			fmt.Fprintf(out, "; thermodynamic at %.0f °C: %.3f ± %.3f", p.ThermoAtC, p.Thermo, p.K*p.UThermo)
