@@ -91,7 +91,7 @@ func (s *Service) correct(ctx context.Context, tx pgx.Tx, lot string, value floa
 // signCorrect reads the arguments of a correction by hand.
 func (s *Service) signCorrect(ctx context.Context, tx pgx.Tx, g Signature, d *db.Deed) (string, error) {
 	if len(g.Object) != 2 {
-		return "", errors.New("name the buffer lot and its true pH at 25 °C: pkvigil sign correct CB-207 9.952 ...")
+		return "", errors.New("name the buffer lot and its true pH at 25 °C: pkvigil sign correct CB-207 9.952 --as NAME --because WHY")
 	}
 	v, err := strconv.ParseFloat(strings.Replace(g.Object[1], ",", ".", 1), 64)
 	if err != nil {

@@ -89,7 +89,6 @@ type scene struct {
 	history drift.History
 	night   string
 	cells   []drift.Cell
-	titles  map[string]string
 }
 
 // scene builds cells, observations, uses and events from the charts. It is nil

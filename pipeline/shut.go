@@ -124,7 +124,7 @@ func (s *Service) signBracket(ctx context.Context, tx pgx.Tx, g Signature, d *db
 			continue
 		}
 		if !onlyDoubt(history) {
-			return "", true, fmt.Errorf("result %d is also in question because of a case; confirm it there: pkvigil sign confirm CASE %d ...", r.ID, r.ID)
+			return "", true, fmt.Errorf("result %d is also in question because of a case; confirm it there: pkvigil sign confirm CASE %d --as NAME --because WHY", r.ID, r.ID)
 		}
 		if err := s.store.PutResultStatus(ctx, tx, db.StatusRow{ResultID: r.ID, Status: db.StatusCleared, At: d.At, Actor: g.As, Because: g.Because}); err != nil {
 			return "", true, err

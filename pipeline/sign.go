@@ -228,7 +228,7 @@ func (s *Service) signResult(ctx context.Context, tx pgx.Tx, g Signature, d *db.
 
 func (s *Service) signReach(ctx context.Context, tx pgx.Tx, g Signature, d *db.Deed) (string, error) {
 	if len(g.Object) < 2 {
-		return "", errors.New("name the case and the result: pkvigil sign " + g.Verb + " CASE RESULT ...")
+		return "", errors.New("name the case and the result: pkvigil sign " + g.Verb + " CASE RESULT --as NAME --because WHY")
 	}
 	if said, ok, err := s.signBracket(ctx, tx, g, d); ok || err != nil {
 		return said, err
@@ -268,7 +268,7 @@ func (s *Service) signReach(ctx context.Context, tx pgx.Tx, g Signature, d *db.D
 
 func (s *Service) signExchange(ctx context.Context, tx pgx.Tx, g Signature, d *db.Deed) (string, error) {
 	if len(g.Object) != 3 {
-		return "", errors.New("name the set and the two rungs: pkvigil sign exchange SET RUNG RUNG ...")
+		return "", errors.New("name the set and the two rungs: pkvigil sign exchange SET RUNG RUNG --as NAME --because WHY")
 	}
 	set, err := s.FindSet(ctx, tx, g.Object[0])
 	if err != nil {
@@ -318,7 +318,7 @@ func (s *Service) again(ctx context.Context, tx pgx.Tx, set *db.Set, d *db.Deed)
 // signBaseline learns the baselines of every chart of a reference anew.
 func (s *Service) signBaseline(ctx context.Context, tx pgx.Tx, g Signature, d *db.Deed) (string, error) {
 	if len(g.Object) != 3 {
-		return "", errors.New("name the reference and the first and last night: pkvigil sign baseline REFERENCE 2026-09-14 2026-09-27 ...")
+		return "", errors.New("name the reference and the first and last night: pkvigil sign baseline REFERENCE 2026-09-14 2026-09-27 --as NAME --because WHY")
 	}
 	ts, err := s.tracks(ctx, tx, d.At)
 	if err != nil {

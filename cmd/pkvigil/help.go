@@ -91,9 +91,7 @@ func topic(name string) (string, bool) {
 	}
 	page := string(text)
 	for mark, f := range map[string]func() string{"{{settings}}": settings.Example, "{{limits}}": limitTable, "{{findings}}": findingTable, "{{causes}}": causeTable} {
-		if strings.Contains(page, mark) {
-			page = strings.Replace(page, mark, strings.TrimRight(f(), "\n"), 1)
-		}
+		page = strings.Replace(page, mark, strings.TrimRight(f(), "\n"), 1)
 	}
 	return page, true
 }
