@@ -37,6 +37,8 @@ func (m *nightMaker) script() {
 		m.sign(at(8, 50), Signature{Verb: "acknowledge", Object: "E-31", As: manager, Because: "electrode to be refilled and calibrated on Monday, new one ordered"})
 	case 20:
 		m.sign(at(8, 40), Signature{Verb: "baseline", Object: instTwo + "/*", As: metrologist, Because: "twenty nights, U2 undisturbed"})
+	case 22, nightReplaced:
+		m.sign(at(9, 0), Signature{Verb: "reopen", Object: instOne, As: manager, Because: "references good before and after the samples, with the electrode calibrated"})
 	case nightTidied:
 		m.tidied()
 	case nightLamp:
@@ -46,6 +48,9 @@ func (m *nightMaker) script() {
 	case nightGoodBuffer:
 		m.sign(at(8, 50), Signature{Verb: "accept", Object: "CB-207", As: metrologist, Because: "true value 9.952 found by comparison with CB-208; recompute the sets of nights 41 to 45"})
 		m.sign(at(8, 55), Signature{Verb: "confirm", Object: "CB-207", As: manager, Because: "sets in the acid range have no weight on this bottle"})
+		for _, inst := range []string{instOne, instTwo} {
+			m.sign(at(9, 0), Signature{Verb: "reopen", Object: inst, As: manager, Because: "bottle CB-207 corrected and replaced, references good on both sides"})
+		}
 	case 47:
 		m.sign(at(8, 45), Signature{Verb: "baseline", Object: instOne + "/*", As: metrologist, Because: "new electrode and lamp: nights 37 to 40 and 46 to 47"})
 	case nightOldLotEnds:
