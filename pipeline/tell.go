@@ -133,7 +133,7 @@ func (s *Service) send(ctx context.Context, d *db.Delivery) error {
 				if err != nil {
 					return err
 				}
-				return snd.Send(ctx, d.Message.Key, d.Message.JSON, d.Message.At)
+				return snd.Send(ctx, d.Message.Key, d.Message.JSON, time.Now()) // signed at the moment of sending: receivers refuse old stamps
 			}
 		}
 	}

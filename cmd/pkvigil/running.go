@@ -159,7 +159,16 @@ func (a *app) runDemo(ctx context.Context, dir string, nights int, seed uint64, 
 	if err := rehearse.Prepare(dir); err != nil {
 		return err
 	}
-	text := story.SettingsWith(dir, rehearse.Wires{DataDir: filepath.Join(dir, "data")})
+	recv, err := startReceiver()
+	if err != nil {
+		return err
+	}
+	defer recv.close()
+	if err := os.Setenv(secretEnv, recv.secret); err != nil {
+		return err
+	}
+	wires := rehearse.Wires{DataDir: filepath.Join(dir, "data"), WebhookURL: recv.url, WebhookSecretEnv: secretEnv}
+	text := story.SettingsWith(dir, wires)
 	a.settings = filepath.Join(dir, "pkvigil.toml")
 	if err := os.WriteFile(a.settings, text, 0o600); err != nil {
 		return err
@@ -182,9 +191,30 @@ func (a *app) runDemo(ctx context.Context, dir string, nights int, seed uint64, 
 	if err == nil {
 		err = a.tellDemo(ctx, s, story, dir, nights, time.Since(start))
 	}
+	if err == nil {
+		a.tellReceived(ctx, s, recv)
+		// The receiver ends with the demo: the settings left behind name none.
+		err = os.WriteFile(a.settings, story.SettingsWith(dir, rehearse.Wires{DataDir: wires.DataDir}), 0o600)
+	}
 	stop, cancel := context.WithTimeout(context.WithoutCancel(ctx), 30*time.Second)
 	defer cancel()
 	return errors.Join(err, s.Close(stop))
+}
+
+// tellReceived waits a little for the last deliveries and says what came.
+func (a *app) tellReceived(ctx context.Context, s *pipeline.Service, recv *receiver) {
+	for range 100 {
+		if left, err := s.Store().PendingDeliveries(ctx, nil, 1); err != nil || len(left) == 0 {
+			break
+		}
+		select {
+		case <-ctx.Done():
+			return
+		case <-time.After(50 * time.Millisecond):
+		}
+	}
+	n, twice, refused := recv.counts()
+	fmt.Fprintf(a.out, "\n%d messages came to the demo's receiver on this machine, each signed; %d twice, %d with a bad signature.\n", n, twice, refused)
 }
 
 // clearDemo removes what an earlier demo left; a folder that is not a demo's is never touched.
