@@ -114,7 +114,7 @@ strong acids and bases, solvents and UV lamps asks for the usual protection.`,
 	f.BoolVarP(&a.verbose, "verbose", "v", false, "log what the service does")
 	f.BoolVar(&a.debug, "debug", false, "log everything, the server's own lines included")
 	root.AddGroup(&cobra.Group{ID: "run", Title: "Running:"}, &cobra.Group{ID: "ask", Title: "Asking:"}, &cobra.Group{ID: "decide", Title: "Deciding:"}, &cobra.Group{ID: "keep", Title: "Keeping:"})
-	for _, c := range []*cobra.Command{a.demo(), a.watch(), a.once()} {
+	for _, c := range []*cobra.Command{a.demo(), a.watch(), a.once(), a.initial()} {
 		c.GroupID = "run"
 		root.AddCommand(c)
 	}
