@@ -214,7 +214,7 @@ func (s *Service) briefSets(ctx context.Context, d *brief.Data, _ time.Time) err
 }
 
 func reference(r db.Summary) brief.Reference {
-	ref := brief.Reference{Key: r.Set.Key, Title: r.Set.Compound, Slot: r.Set.Slot, Verdict: r.Verdict, PKa: math.NaN(), U: math.NaN(), Assigned: math.NaN(), Centre: math.NaN(), Sentence: r.Headline}
+	ref := brief.Reference{Key: r.Set.Key, Instrument: r.Set.Instrument, Title: r.Set.Compound, Slot: r.Set.Slot, Verdict: r.Verdict, PKa: math.NaN(), U: math.NaN(), Assigned: math.NaN(), Centre: math.NaN(), Sentence: r.Headline}
 	if len(r.PKa) > 0 {
 		ref.PKa, ref.U, ref.Assigned = r.PKa[0].PKa, r.PKa[0].Expanded, r.PKa[0].Assigned
 	}
@@ -238,6 +238,16 @@ func (s *Service) briefSet(ctx context.Context, r *db.Result, x db.Set) (*brief.
 	}
 	if acts := storedActions(r.Record); len(acts) > 0 {
 		one.Actions = acts
+	}
+	if i := set(s).InstrumentByName(x.Instrument); i != nil {
+		one.SigmaPH = i.SigmaPH
+	}
+	if r.Standing.InQuestion {
+		why, err := s.questionOf(ctx, r.ID)
+		if err != nil {
+			return nil, err
+		}
+		one.InQuestionWhy = why
 	}
 	for _, p := range r.PKa {
 		one.Constants = append(one.Constants, brief.Constant{Step: p.Step, PKa: p.PKa, U: p.Expanded, K: p.K, UOwn: p.UOwn, URun: p.URun, ULab: p.ULab, Thermo: p.Thermo, UThermo: p.UThermo, Library: p.Library, Anchored: p.Anchored})
@@ -271,6 +281,20 @@ func (s *Service) briefSet(ctx context.Context, r *db.Result, x db.Set) (*brief.
 	return one, s.briefFamily(ctx, one, x)
 }
 
+// questionOf is the newest reason for which a result is in question.
+func (s *Service) questionOf(ctx context.Context, id int64) (string, error) {
+	rows, err := s.store.StatusRows(ctx, nil, id)
+	if err != nil {
+		return "", err
+	}
+	for _, r := range slices.Backward(rows) {
+		if r.Status == db.StatusInQuestion {
+			return r.Because, nil
+		}
+	}
+	return "", nil
+}
+
 // briefFamily adds the measured spectra on the grid of the limit spectra.
 func (s *Service) briefFamily(ctx context.Context, one *brief.Set, x db.Set) error {
 	data, err := s.store.LoadSet(ctx, x.ID)
@@ -298,6 +322,7 @@ func (s *Service) briefFamily(ctx context.Context, one *brief.Set, x db.Set) err
 			}
 		}
 		one.Family = append(one.Family, row)
+		one.FamilyKeys = append(one.FamilyKeys, m.Rung)
 		if !slices.ContainsFunc(one.Rungs, func(g brief.Rung) bool { return naming.RungKey(g.Key) == naming.RungKey(m.Rung) }) {
 			one.Rungs = append(one.Rungs, brief.Rung{Key: m.Rung, PH: math.NaN(), Residual: math.NaN(), AmountPct: math.NaN(), Baseline: math.NaN()})
 		}

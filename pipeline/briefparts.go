@@ -1,11 +1,13 @@
 package pipeline
 
 import (
+	"cmp"
 	"context"
 	"encoding/json"
 	"fmt"
 	"math"
 	"slices"
+	"strings"
 	"time"
 
 	"pkvigil/db"
@@ -160,7 +162,7 @@ func (s *Service) briefCase(ctx context.Context, c db.Case, d *brief.Data) (*bri
 		if err != nil {
 			return nil, err
 		}
-		t := brief.Touched{Set: x.Key, ResultID: r.ResultID, PKa: math.NaN(), Impact: r.Impact, Bound: r.ImpactUpper, Resolution: r.Resolution}
+		t := brief.Touched{Set: x.Key, ResultID: r.ResultID, Verdict: res.Standing.Verdict, Released: !res.Standing.ReleasedAt.IsZero(), PKa: math.NaN(), Impact: r.Impact, Bound: r.ImpactUpper, Resolution: r.Resolution}
 		if len(res.PKa) > 0 {
 			t.PKa = res.PKa[0].PKa
 		}
@@ -219,7 +221,63 @@ func (s *Service) briefCharts(ctx context.Context, d *brief.Data, now time.Time)
 			d.Charts = append(d.Charts, r.c)
 		}
 	}
+	return s.caseCharts(ctx, d, groups)
+}
+
+// chartsPerCase bounds the charts drawn for one case.
+const chartsPerCase = 3
+
+// caseCharts draws for each case the characteristics that speak most, with the
+// nights between which it began.
+func (s *Service) caseCharts(ctx context.Context, d *brief.Data, groups map[string][]db.JudgedPoint) error {
+	for i := range d.Cases {
+		row, err := s.store.CaseByID(ctx, nil, d.Cases[i].ID)
+		if err != nil {
+			return err
+		}
+		c, err := caseOf(*row)
+		if err != nil {
+			return err
+		}
+		lead, ok := c.Lead()
+		if !ok {
+			continue
+		}
+		touched := slices.Clone(c.Explanation.Touched)
+		slices.SortStableFunc(touched, func(a, b drift.Touched) int {
+			return cmp.Compare(weightOf(b), weightOf(a))
+		})
+		for _, t := range touched {
+			ps := groups[seriesOfCell(t.Cell, t.Characteristic)]
+			if len(ps) == 0 || len(d.Cases[i].Charts) == chartsPerCase {
+				continue
+			}
+			ch := chartOf(ps)
+			ch.OnsetLow, ch.OnsetHigh = lead.Since.Low.String(), lead.Since.High.String()
+			d.Cases[i].Charts = append(d.Cases[i].Charts, ch)
+		}
+	}
 	return nil
+}
+
+// weightOf is how loudly a characteristic speaks, in standard deviations.
+func weightOf(t drift.Touched) float64 {
+	if !(t.SD > 0) {
+		return 0
+	}
+	return math.Abs(t.Observed) / t.SD
+}
+
+// seriesOfCell is the key of the chart behind a cell's characteristic.
+func seriesOfCell(cell string, c drift.Characteristic) string {
+	if name, ok := strings.CutPrefix(cell, "electrode/"); ok {
+		return trackKey(db.Series{ScopeKind: db.ScopeElectrode, Scope: name, Characteristic: string(c)})
+	}
+	parts := strings.SplitN(cell, "/", 3)
+	if len(parts) != 3 {
+		return ""
+	}
+	return trackKey(db.Series{ScopeKind: db.ScopeInstrument, Scope: parts[0], Reference: parts[1], RefLot: parts[2], Characteristic: string(c)})
 }
 
 func flags(p db.JudgedPoint) []string {

@@ -106,7 +106,7 @@ func (s *Service) BriefFor(ctx context.Context, night string) (*brief.Data, erro
 	if _, err := time.Parse(time.DateOnly, night); err != nil {
 		return nil, fmt.Errorf("night %q: expected a date like 2026-09-14: %w", night, ErrUnknownObject)
 	}
-	end, err := onNight(night, "06:30", set(s).Zone())
+	end, err := onNight(night, "11:59", set(s).Zone())
 	if err != nil {
 		return nil, err
 	}
