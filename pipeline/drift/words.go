@@ -128,6 +128,12 @@ func (l *look) outside(c rankedCause, ts []trace) string {
 	for _, i := range c.out.s.cells {
 		in[l.cells[i].c.Instrument] = true
 	}
+	// A cell that used the resource but cannot feel the cause says nothing either way.
+	for i := range l.cells {
+		for n := c.onset; n < l.nights && !in[l.cells[i].c.Instrument]; n++ {
+			in[l.cells[i].c.Instrument] = l.usedBy(c.out.s.res, l.m.traits[c.out.s.trait].Role, i, n)
+		}
+	}
 	moved := map[string]bool{}
 	var others []string
 	for _, t := range ts {
