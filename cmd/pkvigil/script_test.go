@@ -470,6 +470,34 @@ func TestTopicExamples(t *testing.T) {
 	}
 }
 
+// TestReadmeFormats: the three files in the README are read as it says.
+func TestReadmeFormats(t *testing.T) {
+	text, err := os.ReadFile("../../README.md")
+	if err != nil {
+		t.Fatal(err)
+	}
+	dir := t.TempDir()
+	file := filepath.Join(dir, "pkvigil.toml")
+	if err := os.WriteFile(file, []byte("[[folder]]\nname = \"f\"\npath = \""+dir+"\"\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	examples := regexp.MustCompile("(?s)   ```(csv|jcamp)\n(.*?)   ```").FindAllStringSubmatch(string(text), -1)
+	want := []string{"2 scans", "1 scan", "3 pH readings"}
+	if len(examples) != len(want) {
+		t.Fatalf("%d examples of formats", len(examples))
+	}
+	for i, m := range examples {
+		name := filepath.Join(dir, fmt.Sprintf("%d.%s", i+1, m[1]))
+		if err := os.WriteFile(name, []byte(strings.ReplaceAll(m[2], "   ", "")), 0o600); err != nil {
+			t.Fatal(err)
+		}
+		var out, errs bytes.Buffer
+		if code := run(t.Context(), []string{"look", "--explain", name, "-s", file}, &out, &errs); code != exitOK || !strings.Contains(out.String(), want[i]) || strings.Contains(out.String(), "refused") {
+			t.Errorf("example %d, exit code %d, %q expected:\n%s%s", i+1, code, want[i], out.String(), errs.String())
+		}
+	}
+}
+
 // TestCheckWords: the page of checks names exactly what the room that judges does.
 func TestCheckWords(t *testing.T) {
 	made := map[string]string{}
