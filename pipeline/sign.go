@@ -53,7 +53,7 @@ func Verbs() [][2]string {
 		{actLift, "RESULT or SET        the hold does not matter; it may be released"},
 		{actRelease, "RESULT, SET or night:2026-09-14   send it out"},
 		{actStrike, "RESULT or SET        withdraw it, for good"},
-		{actConfirm, "CASE RESULT          this result is unaffected by the case; BRACKET RESULT for a failed bracket"},
+		{actConfirm, "CASE RESULT or BRACKET RESULT   this result is unaffected"},
 		{actAffected, "CASE RESULT          this result is affected by the case"},
 		{actExchange, "SET RUNG RUNG        labels were exchanged; compute again, both versions stay"},
 		{actBaseline, "REFERENCE FROM TO    learn the baseline anew from these nights (YYYY-MM-DD)"},

@@ -145,6 +145,7 @@ func findingWords() map[string]string {
 		"scan.smoothed":  "a scan was smoothed before it was exported",
 		"ph.copy":        "two solutions have one pH to the digit but other spectra",
 		"dye.identity":   "the spectra look like another dye than the name says",
+		"lot.new":        "a new lot of a reference that has no baseline yet",
 		"lot.unknown":    "the compound is not in the settings",
 		"second.dye":     "a second dye, with its share and pKa",
 		"blank":          "the set has no blank",
