@@ -77,3 +77,9 @@ func (s *Store) MeasuredSets(ctx context.Context, q Querier, from, to, instrumen
 		return m, done()
 	})
 }
+
+// ParkedOfRun gives the newest revisions of parked files of a root whose name
+// gives a run, by path.
+func (s *Store) ParkedOfRun(ctx context.Context, q Querier, root, run string) ([]File, error) {
+	return s.files(ctx, q, "listing files that wait for a sheet", `where f.state = 'parked' and f.root = $1 and f.match ->> 'run' = $2 and `+newest+` order by f.path`, root, run)
+}

@@ -143,6 +143,9 @@ func (s *Service) placesOf(it *item) ([]place, error) {
 		p := s.placeOf(it, it.match, time.Time{})
 		return []place{p}, nil
 	case naming.RolePH:
+		if it.sheet != nil {
+			return s.placesBySheet(it), nil
+		}
 		var at time.Time
 		if len(it.content.Readings) > 0 {
 			at = it.content.Readings[0].Measured
@@ -150,6 +153,9 @@ func (s *Service) placesOf(it *item) ([]place, error) {
 		p := s.placeOf(it, it.match, at)
 		p.isPH = true
 		return []place{p}, nil
+	}
+	if it.sheet != nil {
+		return s.placesBySheet(it), nil
 	}
 	_, rules, _ := s.current()
 	rule, _ := rules.Rule(it.match.Rule)
@@ -189,6 +195,9 @@ func traceMatch(rules *naming.Rules, rule naming.Rule, it *item, i int) (naming.
 	switch {
 	case rule.Column != "":
 		return rules.MatchColumn(m, label)
+	case needsSheet(m) && m.Pos == "" && label != "":
+		m.Pos = label // a plate in one file: its columns are positions
+		return m, nil
 	case len(it.content.Scans) == 1:
 		return m, nil
 	case rule.Pair == "inside":
@@ -376,6 +385,9 @@ func (s *Service) progress(ctx context.Context, tx pgx.Tx, o db.OpenSet, now tim
 			ms.Keys = slices.Sorted(maps.Keys(o.RungPH))
 		}
 		p.Members = append(p.Members, ms)
+	}
+	if err := s.planned(ctx, tx, o, members, &p); err != nil {
+		return err
 	}
 	// A set that was whole before and changes is whole at once: somebody waits for the correction.
 	if o.State == db.SetFitted || o.State == db.SetComplete {

@@ -38,6 +38,7 @@ type item struct {
 	again    error // cannot be read now; it is offered again
 	touched  bool  // same path, same bytes: nothing to store
 	taken    *db.Taken
+	sheet    *runSheet // of its run, where the name gives no set
 }
 
 // TakenIn counts what a take-in did.
@@ -216,6 +217,11 @@ func (s *Service) takeInTx(ctx context.Context, tx pgx.Tx, items []*item, batch 
 	if err != nil {
 		return got, err
 	}
+	placed, err := s.releaseParked(ctx, tx, todo, now)
+	if err != nil {
+		return got, err
+	}
+	touched = append(touched, placed...)
 	got.Sets = touched
 	return got, s.assemble(ctx, tx, touched, now)
 }
@@ -246,6 +252,9 @@ func (s *Service) decide(ctx context.Context, tx pgx.Tx, items []*item, now time
 			continue
 		}
 		row := s.row(it, now)
+		if err := s.findSheet(ctx, tx, it); err != nil {
+			return nil, err
+		}
 		s.judgeFile(it, row, byHash[it.sum], inBatch[it.sum])
 		if row.File.State == db.FileTaken {
 			if inBatch[it.sum] == nil {
@@ -257,7 +266,7 @@ func (s *Service) decide(ctx context.Context, tx pgx.Tx, items []*item, now time
 		} else {
 			row.Content = nil
 		}
-		if row.File.State == db.FileParked {
+		if row.File.State == db.FileParked && !waitsForSheet(it, &row.File) {
 			if known == nil {
 				if known, err = s.knownSets(ctx, tx, items); err != nil {
 					return nil, err
