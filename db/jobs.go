@@ -210,3 +210,24 @@ func (s *Store) ReferenceNights(ctx context.Context, instrument, compound, befor
 	}
 	return n, nil
 }
+
+// FirstStandingOf gives, for every compound measured on an instrument, the
+// earliest result that was not held of a night before the given one: its limit
+// spectra tell dyes apart.
+func (s *Store) FirstStandingOf(ctx context.Context, q Querier, instrument, before string) (map[string]int64, error) {
+	rows, err := s.on(q).Query(ctx, `
+		SELECT DISTINCT ON (s.compound) s.compound, r.id
+		FROM pkvigil.result r JOIN pkvigil.sample_set s ON s.id = r.set_id
+		WHERE s.instrument = $1 AND s.compound <> '' AND s.night < $2::date AND r.verdict IN ('stands', 'stands-noted')
+		ORDER BY s.compound, s.night, s.key, r.set_revision, r.id`, instrument, before)
+	if err != nil {
+		return nil, fmt.Errorf("finding archived spectra: %w", safe(err))
+	}
+	out := map[string]int64{}
+	var name string
+	var id int64
+	if _, err := pgx.ForEachRow(rows, []any{&name, &id}, func() error { out[name] = id; return nil }); err != nil {
+		return nil, fmt.Errorf("finding archived spectra: %w", safe(err))
+	}
+	return out, nil
+}

@@ -155,6 +155,11 @@ func (s *Service) inputOf(ctx context.Context, x *db.Set, r *db.Result, u used) 
 		}
 		in.Calibration = &cal.Calibration
 	}
+	if len(u.OtherIDs) > 0 {
+		if in.Others, err = s.library(ctx, u.OtherIDs); err != nil {
+			return nil, nil, err
+		}
+	}
 	if u.ArchiveID != 0 {
 		a, err := s.store.ResultByID(ctx, nil, u.ArchiveID)
 		if err != nil {

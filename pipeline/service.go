@@ -69,6 +69,7 @@ type Service struct {
 	evalDue      time.Time // when an evaluation that waits for the queue has waited enough; guarded by tickMu
 	awaySince    time.Time // since when take-in finds the database away; owned by the sweep
 	due          sync.Map  // set id -> dueAt
+	dyes         sync.Map  // result id -> spectra.LibraryEntry
 	cacheMu      sync.Mutex
 	designs      map[string]*drift.Design // archived designs by instrument, reference and lot
 	records      map[int64]storedRecord

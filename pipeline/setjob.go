@@ -6,6 +6,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"maps"
 	"math"
 	"slices"
 	"strings"
@@ -78,6 +79,7 @@ type used struct {
 	SettingsID    int64              `json:"settings_id"`
 	CalibrationID int64              `json:"calibration_id,omitempty"`
 	ArchiveID     int64              `json:"archive_result_id,omitempty"`
+	OtherIDs      []int64            `json:"other_result_ids,omitempty"`
 	MemberIDs     []int64            `json:"member_ids"`
 	Electrode     string             `json:"electrode,omitempty"`
 	NewLot        string             `json:"new_lot,omitempty"`
@@ -119,6 +121,9 @@ func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *u
 		return nil, nil, err
 	}
 	if err := s.archiveOf(ctx, in, u, data); err != nil {
+		return nil, nil, err
+	}
+	if err := s.othersOf(ctx, in, u, data); err != nil {
 		return nil, nil, err
 	}
 	if u.NewLot, err = s.newLot(ctx, set, in, data); err != nil {
@@ -260,6 +265,50 @@ func (s *Service) archiveOf(ctx context.Context, in *assay.Input, u *used, data 
 	u.ArchiveID = id
 	in.Archive = archiveFrom(r)
 	return nil
+}
+
+// othersOf finds what the dyes of this instrument look like, so that a vial
+// with the wrong one is noticed.
+func (s *Service) othersOf(ctx context.Context, in *assay.Input, u *used, data *db.SetData) error {
+	if in.Compound == nil {
+		return nil
+	}
+	ids, err := s.store.FirstStandingOf(ctx, nil, data.Set.Instrument, data.Set.Night)
+	if err != nil || ids[in.Compound.Name] == 0 {
+		return err // without its own spectrum nothing can be told
+	}
+	for _, name := range slices.Sorted(maps.Keys(ids)) {
+		u.OtherIDs = append(u.OtherIDs, ids[name])
+	}
+	in.Others, err = s.library(ctx, u.OtherIDs)
+	return err
+}
+
+// library loads the archived spectra of results; each is read once.
+func (s *Service) library(ctx context.Context, ids []int64) ([]spectra.LibraryEntry, error) {
+	var out []spectra.LibraryEntry
+	for _, id := range ids {
+		if e, ok := s.dyes.Load(id); ok {
+			out = append(out, e.(spectra.LibraryEntry))
+			continue
+		}
+		r, err := s.store.ResultByID(ctx, nil, id)
+		if err != nil {
+			return nil, err
+		}
+		set, err := s.store.SetByID(ctx, nil, r.SetID)
+		if err != nil {
+			return nil, err
+		}
+		for _, l := range r.Spectra {
+			if l.Species == "base" {
+				e := spectra.LibraryEntry{Name: set.Compound, WavelengthNM: l.WavelengthNM, Spectra: l.Value}
+				s.dyes.Store(id, e)
+				out = append(out, e)
+			}
+		}
+	}
+	return out, nil
 }
 
 func archiveFrom(r *db.Result) *assay.Archive {
