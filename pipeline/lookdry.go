@@ -82,7 +82,6 @@ type DrySet struct {
 	Older    int          `json:"older"`   // members that a later correction replaces
 	members  []place
 	labels   map[string]bool // rows of its pH tables
-	planned  []string
 }
 
 // A DryRung is one solution of a set.

@@ -274,9 +274,13 @@ func (s *samples) read(path string, raw []byte, m naming.Match) {
 		if s.refused == "" {
 			s.refused = sentence(err.Error())
 		}
-		return
+		// What the file holds besides is learnt as if a person had stated the units; that stays a doubt.
+		opt.Layouts = []parse.Layout{{Name: "trial", Abscissa: "nm", Ordinate: "absorbance"}}
+		if c, err = export.Read(path, raw, opt); err != nil {
+			return
+		}
 	}
-	if _, l := export.Explain(path, raw, opt); l.Shape != "" && len(c.Scans) > 0 {
+	if _, l := export.Explain(path, raw, opt); opt.Layouts == nil && l.Shape != "" && len(c.Scans) > 0 {
 		s.layouts = append(s.layouts, l)
 	}
 	s.jcamp = s.jcamp || c.Format == "jcamp-dx"
@@ -376,22 +380,31 @@ func (s *samples) decide(r *proposedRule, f *proposedFolder) {
 
 // sharedRuns lets a sheet or table that lies beside scans of a run belong to it.
 func (p *proposal) sharedRuns() {
+	group := func(r naming.Rule, name string) bool { return strings.Contains(r.Pattern, "(?P<"+name+">") }
 	for i := range p.rules {
 		r := &p.rules[i]
-		if r.Run != "" || strings.Contains(r.Pattern, "(?P<run>") || strings.Contains(r.Pattern, "(?P<set>") {
+		if r.Run != "" || group(r.Rule, "set") {
 			continue
 		}
 		for _, o := range p.rules {
 			if o.Run == "" || !slices.Equal(o.Folders, r.Folders) {
 				continue
 			}
-			fits := true
-			for _, g := range regexp.MustCompile(`\$\{(\w+)\}`).FindAllStringSubmatch(o.Run, -1) {
-				fits = fits && strings.Contains(r.Pattern, "(?P<"+g[1]+">")
+			try := r.Rule
+			if group(try, "run") && !group(try, "inst") && strings.Contains(o.Run, "${inst}") {
+				try.Pattern = strings.Replace(try.Pattern, "(?P<run>", "(?P<inst>", 1) // the same directory by its other name
 			}
-			if fits {
-				r.Run = o.Run
-				r.doubts = slices.DeleteFunc(r.doubts, func(d string) bool { return strings.HasPrefix(d, "The names hold no set") })
+			fits := !group(try, "run")
+			for _, g := range regexp.MustCompile(`\$\{(\w+)\}`).FindAllStringSubmatch(o.Run, -1) {
+				fits = fits && group(try, g[1])
+			}
+			if !fits {
+				continue
+			}
+			r.Pattern, r.Run = try.Pattern, o.Run
+			r.doubts = slices.DeleteFunc(r.doubts, func(d string) bool { return strings.HasPrefix(d, "The names hold no set") })
+			if group(r.Rule, "inst") {
+				p.folders[r.folder].instrument = ""
 			}
 		}
 	}

@@ -87,6 +87,9 @@ func counterLetter(paths []string) string {
 			continue
 		}
 		letter := x[m[4]:m[5]]
+		if slices.Contains([]string{"night", "n", "run", "plate", "day", "v", "rev"}, strings.ToLower(letter)) {
+			continue // a counter of something else
+		}
 		if heads[letter] == nil {
 			heads[letter] = map[string]bool{}
 		}
