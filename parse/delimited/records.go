@@ -168,9 +168,22 @@ func (r *reader) sheet(t *table) (*parse.Content, error) {
 				}
 			}
 		}
+		if saysNothing(s) {
+			c.Remarks = append(c.Remarks, parse.Remark{Line: row.line, Text: "a row that says nothing left out"})
+			continue
+		}
 		c.Sheet = append(c.Sheet, s)
 	}
+	if len(c.Sheet) == 0 {
+		return nil, r.refuse(0, "", "rows that say nothing", "rows with a position, set or rung", "fill the sheet in")
+	}
 	return c, nil
+}
+
+// saysNothing is true of a row of a sheet in which no field stands.
+func saysNothing(s parse.Row) bool {
+	return s.Position == "" && s.Set == "" && s.Rung == "" && s.Role == "" && s.Compound == "" && s.Lot == "" && s.Buffer == "" && s.Cosolvent == "" &&
+		s.Dilution == 0 && math.IsNaN(s.IonicStrength) && math.IsNaN(s.CosolventPct) && math.IsNaN(s.PH) && len(s.Other) == 0
 }
 
 // unread tells whether no field of a sheet row is made from column i.
