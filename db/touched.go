@@ -83,3 +83,15 @@ func (s *Store) MeasuredSets(ctx context.Context, q Querier, from, to, instrumen
 func (s *Store) ParkedOfRun(ctx context.Context, q Querier, root, run string) ([]File, error) {
 	return s.files(ctx, q, "listing files that wait for a sheet", `where f.state = 'parked' and f.root = $1 and f.match ->> 'run' = $2 and `+newest+` order by f.path`, root, run)
 }
+
+// KeepBracketSets takes every set but these out of a bracket: a reference that
+// comes late may divide it.
+func (s *Store) KeepBracketSets(ctx context.Context, tx pgx.Tx, bracketID int64, sets []int64) error {
+	if sets == nil {
+		sets = []int64{}
+	}
+	if _, err := tx.Exec(ctx, `delete from bracket_set where bracket_id = $1 and set_id <> all($2)`, bracketID, sets); err != nil {
+		return fmt.Errorf("dividing bracket %d: %w", bracketID, err)
+	}
+	return nil
+}

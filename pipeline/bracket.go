@@ -29,13 +29,17 @@ type timed struct {
 	at time.Time
 }
 
+// longestSet bounds the time one set takes: a scan that was repeated in the
+// morning does not move its set there.
+const longestSet = 2 * time.Hour
+
 // timedSet finds the moment of a set: the middle of its scans where they say
 // when, else the newest scan, else the arrival of its first file.
 func timedSet(m db.Measured) timed {
 	t := timed{m, m.Set.LastScanAt}
 	switch {
 	case !m.From.IsZero():
-		t.at = m.From.Add(m.To.Sub(m.From) / 2)
+		t.at = m.From.Add(min(m.To.Sub(m.From), longestSet) / 2)
 	case t.at.IsZero():
 		t.at = m.Set.FirstSeen
 	}

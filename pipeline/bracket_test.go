@@ -395,3 +395,50 @@ func TestReferenceNotRun(t *testing.T) {
 		t.Errorf("after the next good reference: %s", v)
 	}
 }
+
+// A reference that lacks something says nothing until it comes: the run waits
+// for the next one. When the late table comes, it divides the bracket.
+func TestLateReferenceDividesTheBracket(t *testing.T) {
+	dyes := rehearse.Dyes()
+	sc := &rehearse.Scenario{Seed: 11, Noise: rehearse.Quiet(), Design: rehearse.Design{Dyes: []rehearse.Dye{dyes["RI-A"], dyes["CR"], dyes["RI-C"], dyes["PR"]}}}
+	l := sampleLab(t, sc, "CR", "PR")
+	ds, err := sc.Export(1, rehearse.Style{})
+	if err != nil {
+		t.Fatal(err)
+	}
+	l.night(sc, 1, "RI-C-1_ph")
+	l.steps(2 * time.Hour)
+	if x := l.set("RI-C-1.n001"); x.State != db.SetWaiting {
+		t.Fatalf("the reference is %s", x.State)
+	}
+	brackets := func() string {
+		rows, err := l.s.store.Brackets(t.Context(), nil, "U1", "2026-03-01")
+		if err != nil {
+			t.Fatal(err)
+		}
+		var out []string
+		for _, b := range rows {
+			out = append(out, fmt.Sprintf("%s %s %d", strings.TrimPrefix(b.Key, "U1/2026-"), b.State, len(b.Sets)))
+		}
+		return strings.Join(out, ", ")
+	}
+	if got := brackets(); got != "03-02/after-RI-A-1.n001 open 1, 03-02/after-RI-C-1.n001 open 1" {
+		t.Errorf("while it waits: %s", got)
+	}
+	l.night(sc, 2)
+	if got := brackets(); !strings.HasPrefix(got, "03-02/after-RI-A-1.n001 good 1, 03-02/after-RI-C-1.n001 good 1") {
+		t.Errorf("after the next good one: %s", got)
+	}
+	for _, d := range ds {
+		if strings.Contains(d.Path, "RI-C-1_ph") {
+			l.write("U1/"+d.Path, d.Bytes)
+		}
+	}
+	l.settle()
+	if x := l.set("RI-C-1.n001"); x.State != db.SetFitted {
+		t.Fatalf("the reference is %s", x.State)
+	}
+	if got := brackets(); !strings.HasPrefix(got, "03-02/after-RI-A-1.n001 good 1, 03-02/after-RI-C-1.n001 good 1") {
+		t.Errorf("with the late table: %s", got)
+	}
+}

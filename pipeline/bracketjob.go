@@ -175,7 +175,11 @@ func (s *Service) referenceLimits(ctx context.Context, q db.Querier, instrument,
 // outside the limits of its chart and so far off that results are touched; a
 // shift below the impact limit is recorded on the chart and fails nothing.
 func judgeReference(x timed, limits map[int64]db.JudgedPoint, impact float64) (shift, string) {
-	if x.ResultID == 0 || x.Set.State != db.SetFitted {
+	switch {
+	case x.ResultID != 0 && x.Set.State == db.SetFitted:
+	case x.Set.State == db.SetWaiting:
+		return shift{}, stationSpoiled // what it lacks may never come; if it does, all is decided again
+	default:
 		return shift{}, stationPending
 	}
 	bySelf := slices.ContainsFunc(x.HeldBy, func(k string) bool { return spoiled[k] })
@@ -231,13 +235,26 @@ func (s *Service) bracketsOf(ctx context.Context, tx pgx.Tx, instrument, from, t
 			continue
 		}
 		b.At = now
-		if was, ok := stored[b.Key]; !ok || !sameBracket(was, b.Bracket) {
+		was, ok := stored[b.Key]
+		delete(stored, b.Key)
+		if !ok || !sameBracket(was, b.Bracket) {
 			if err := s.store.PutBracket(ctx, tx, &b.Bracket); err != nil {
+				return err
+			}
+			if err := s.store.KeepBracketSets(ctx, tx, b.ID, b.Sets); err != nil {
 				return err
 			}
 		}
 		if err := s.doubt(ctx, tx, b, l.unrun, now); err != nil {
 			return err
+		}
+	}
+	// A bracket whose sets have all found their place in others holds nothing up.
+	for _, b := range stored {
+		if len(b.Sets) > 0 && b.Night >= low && b.Night <= high && !slices.ContainsFunc(l.spans, func(x span) bool { return x.Key == b.Key }) {
+			if err := s.store.KeepBracketSets(ctx, tx, b.ID, nil); err != nil {
+				return err
+			}
 		}
 	}
 	return s.shutInstrument(ctx, tx, instrument, l, now)
@@ -248,12 +265,7 @@ func sameBracket(was, is db.Bracket) bool {
 	if was.State != is.State || was.Run != is.Run || !same(was.OpenedBySet, is.OpenedBySet) || !same(was.ClosedBySet, is.ClosedBySet) {
 		return false
 	}
-	for _, id := range is.Sets {
-		if !slices.Contains(was.Sets, id) {
-			return false
-		}
-	}
-	return true
+	return slices.Equal(was.Sets, is.Sets)
 }
 
 // bracketWord begins the reason of every doubt that a bracket raises.

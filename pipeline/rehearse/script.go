@@ -48,8 +48,8 @@ func (m *nightMaker) script() {
 	case nightGoodBuffer:
 		m.sign(at(8, 50), Signature{Verb: "accept", Object: "CB-207", As: metrologist, Because: "true value 9.952 found by comparison with CB-208; recompute the sets of nights 41 to 45"})
 		m.sign(at(8, 55), Signature{Verb: "confirm", Object: "CB-207", As: manager, Because: "sets in the acid range have no weight on this bottle"})
-		for _, inst := range []string{instOne, instTwo} {
-			m.sign(at(9, 0), Signature{Verb: "reopen", Object: inst, As: manager, Because: "bottle CB-207 corrected and replaced, references good on both sides"})
+		for i, inst := range []string{instOne, instTwo} {
+			m.sign(at(9, 5*i), Signature{Verb: "reopen", Object: inst, As: manager, Because: "bottle CB-207 corrected and replaced, references good on both sides"})
 		}
 	case 47:
 		m.sign(at(8, 45), Signature{Verb: "baseline", Object: instOne + "/*", As: metrologist, Because: "new electrode and lamp: nights 37 to 40 and 46 to 47"})
