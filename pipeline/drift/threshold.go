@@ -141,46 +141,19 @@ func (m *Model) quietRun(h History, rng *rand.Rand) (top float64, hypotheses int
 // centre and spread are off by what their number of sets allows, squares of
 // norm-like characteristics follow scaled chi-square distributions.
 func (m *Model) Quiet(h History, rng *rand.Rand) []Observation {
-	type nature struct {
-		low, between []float64
-		centre       []float64
-		widen        []float64
-		dof          []float64 // of norm-like ones, 0 for Gaussian
-	}
 	made := map[int]*nature{}
-	get := func(i int) *nature {
-		if n, ok := made[i]; ok {
-			return n
-		}
-		c := &m.cells[i]
-		n := &nature{low: lower(c.Cell.Cov, c.k), centre: make([]float64, c.k), widen: make([]float64, c.k), dof: make([]float64, c.k)}
-		if c.NightCov != nil {
-			n.between = lower(c.NightCov, c.k)
-		}
-		shift := make([]float64, c.k)
-		if c.base != nil {
-			addNormal(rng, lower(c.base, c.k), shift, 1)
-		}
-		for j, ch := range c.Characteristics {
-			n.centre[j] = c.Cell.Centre[j] - shift[j]
-			n.widen[j] = 1
-			if c.DOF > 0 {
-				n.widen[j] = math.Sqrt(c.DOF / math.Max(0.5, chiSquare(rng, c.DOF)))
-			}
-			if v := c.Cell.Cov[j*c.k+j]; ch.NormLike() && c.Cell.Centre[j] > 0 {
-				n.dof[j] = 2 * c.Cell.Centre[j] * c.Cell.Centre[j] / v
-			}
-		}
-		made[i] = n
-		return n
-	}
 	out := make([]Observation, 0, len(h.Observations))
 	for _, o := range h.Observations {
 		i, ok := m.byKey[o.Cell]
 		if !ok {
 			continue
 		}
-		n, c := get(i), &m.cells[i]
+		c := &m.cells[i]
+		n := made[i]
+		if n == nil {
+			n = c.nature(rng)
+			made[i] = n
+		}
 		sets := max(1, o.Sets)
 		v := make([]float64, c.k)
 		addNormal(rng, n.low, v, 1/math.Sqrt(float64(sets)))
@@ -203,6 +176,37 @@ func (m *Model) Quiet(h History, rng *rand.Rand) []Observation {
 		out = append(out, Observation{Cell: o.Cell, Night: o.Night, Sets: sets, Values: v})
 	}
 	return out
+}
+
+// A nature is how one cell really behaves in a quiet series.
+type nature struct {
+	low, between []float64 // factors of the covariances
+	centre       []float64
+	widen        []float64 // true sd over the baseline's
+	dof          []float64 // of norm-like ones, 0 for Gaussian
+}
+
+// nature draws what the baseline of a cell could not know.
+func (c *cell) nature(rng *rand.Rand) *nature {
+	n := &nature{low: lower(c.Cell.Cov, c.k), centre: make([]float64, c.k), widen: make([]float64, c.k), dof: make([]float64, c.k)}
+	if c.NightCov != nil {
+		n.between = lower(c.NightCov, c.k)
+	}
+	shift := make([]float64, c.k)
+	if c.base != nil {
+		addNormal(rng, lower(c.base, c.k), shift, 1)
+	}
+	for j, ch := range c.Characteristics {
+		n.centre[j] = c.Cell.Centre[j] - shift[j]
+		n.widen[j] = 1
+		if c.DOF > 0 {
+			n.widen[j] = math.Sqrt(c.DOF / math.Max(0.5, chiSquare(rng, c.DOF)))
+		}
+		if v := c.Cell.Cov[j*c.k+j]; ch.NormLike() && c.Cell.Centre[j] > 0 {
+			n.dof[j] = 2 * c.Cell.Centre[j] * c.Cell.Centre[j] / v
+		}
+	}
+	return n
 }
 
 // addNormal adds f L z to v.
