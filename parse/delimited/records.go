@@ -180,10 +180,10 @@ func (r *reader) sheet(t *table) (*parse.Content, error) {
 	return c, nil
 }
 
-// saysNothing is true of a row of a sheet in which no field stands.
+// saysNothing is true of a row of a sheet in which no field stands that this program reads.
 func saysNothing(s parse.Row) bool {
 	return s.Position == "" && s.Set == "" && s.Rung == "" && s.Role == "" && s.Compound == "" && s.Lot == "" && s.Buffer == "" && s.Cosolvent == "" &&
-		s.Dilution == 0 && math.IsNaN(s.IonicStrength) && math.IsNaN(s.CosolventPct) && math.IsNaN(s.PH) && len(s.Other) == 0
+		s.Dilution == 0 && math.IsNaN(s.IonicStrength) && math.IsNaN(s.CosolventPct) && math.IsNaN(s.PH)
 }
 
 // unread tells whether no field of a sheet row is made from column i.
