@@ -135,12 +135,63 @@ func buffers() []Check {
 			if math.IsNaN(r[1+i]) {
 				continue
 			}
-			g.try(fmt.Sprintf("pH(S) of %s, %g C", key, r[0]), r[1+i], 6e-4, func() (float64, error) {
+			within := 1e-9 // tabulated temperatures are met exactly
+			if key == "phthalate-1977" || key == "phthalate-1946" {
+				within = 6e-4
+			}
+			g.try(fmt.Sprintf("pH(S) of %s, %g C", key, r[0]), r[1+i], within, func() (float64, error) {
 				b, err := acidbase.BufferAt(key, r[0])
 				return b.PH, err
 			})
 		}
 	}
+	return append(g.list, bufferFigures()...)
+}
+
+// bufferFigures: what is stated of a buffer besides its pH(S).
+func bufferFigures() []Check {
+	g := group{name: "standard buffers", source: "Buck et al. 2002, U = 0.003 with k = 2 (from memory)"}
+	at := func(key string, get func(acidbase.Buffer) float64) func() (float64, error) {
+		return func() (float64, error) {
+			b, err := acidbase.BufferAt(key, 25)
+			return get(b), err
+		}
+	}
+	for _, key := range []string{"tartrate", "citrate", "phthalate", "phthalate-nbs", "phosphate", "phosphate-1:3.5", "phthalate-1977"} {
+		g.try("standard uncertainty of "+key, 0.0015, 1e-9, at(key, func(b acidbase.Buffer) float64 { return b.U }))
+	}
+	g.source = "Buck et al. 2002, U = 0.01 with k = 2 (from memory)"
+	g.try("standard uncertainty of the convention", 0.005, 1e-9, at("phosphate", func(b acidbase.Buffer) float64 { return b.UConvention }))
+	g.source = "Bates 1962 (from memory, checked)"
+	g.try("nominal value of borax", 9.180, 1e-9, at("borax", func(b acidbase.Buffer) float64 { return b.At25 }))
+	return g.list
+}
+
+// acidFigures: the tabulated enthalpies and heat capacities themselves, some of
+// which are too small to show in a constant of three decimals.
+func acidFigures() []Check {
+	g := group{name: "buffer acids"}
+	figure := func(name string, step int, what string, want float64, get func(acidbase.Step) float64) {
+		g.try(fmt.Sprintf("%s of %s, step %d", what, name, step), want, math.Abs(want)*1e-9, func() (float64, error) {
+			acid, ok := acidbase.AcidNamed(name)
+			if !ok || len(acid.Steps) < step {
+				return 0, fmt.Errorf("no step %d of %s", step, name)
+			}
+			return get(acid.Steps[step-1]), nil
+		})
+	}
+	for _, a := range acidTable() {
+		g.source = "Goldberg, Kishore & Lennen 2002"
+		if a.memory {
+			g.source += " (from memory)"
+		}
+		figure(a.name, a.step, "enthalpy, kJ/mol,", a.enthalpy, func(s acidbase.Step) float64 { return s.EnthalpyKJ })
+		figure(a.name, a.step, "heat capacity, J/(mol K),", a.capacity, func(s acidbase.Step) float64 { return s.HeatCapacity })
+	}
+	g.source = "common geochemical tables"
+	figure("sulfate", 1, "pK", 1.988, func(s acidbase.Step) float64 { return s.PK })
+	g.source = "handbook value (from memory)"
+	figure("formate", 1, "pK", 3.751, func(s acidbase.Step) float64 { return s.PK })
 	return g.list
 }
 
@@ -163,6 +214,7 @@ func acids() []Check {
 			})
 		}
 	}
+	g.list = append(g.list, acidFigures()...)
 	for _, r := range carbonateTable() {
 		g.source = "Plummer & Busenberg 1982, computed"
 		g.is(fmt.Sprintf("pK1 of carbonic acid, %g C", r[0]), r[1], 6e-4, func() float64 { v, _ := acidbase.CarbonatePK(r[0]); return v })
@@ -240,18 +292,20 @@ func constants() []Check {
 func dyes() []Check {
 	g := group{name: "indicator equations"}
 	for _, r := range dyeTable() {
-		e, ok := acidbase.DyeEquationNamed(r.key)
+		e, _ := acidbase.DyeEquationNamed(r.key)
 		g.source = e.Source + ", computed"
 		if e.Memory {
 			g.source += " (coefficients from memory)"
 		}
 		g.try(fmt.Sprintf("pH by %s, S %g, %g C, I %g, R %g", r.key, r.s, r.t, r.i, r.r), r.ph, 6e-5, func() (float64, error) {
+			e, ok := acidbase.DyeEquationNamed(r.key)
 			if !ok {
 				return 0, fmt.Errorf("no equation %s", r.key)
 			}
 			return e.PH(r.r, acidbase.DyeCondition{Salinity: r.s, TempC: r.t, Ionic: r.i}), nil
 		})
 	}
+	g.list = append(g.list, dyeFigures()...)
 	g.source = "Mueller & Rehder 2018, printed"
 	g.is("pH by mcp-2018, S 35, 25 C, R 1", 7.6713, 5e-5, func() float64 {
 		e, _ := acidbase.DyeEquationNamed("mcp-2018")
@@ -268,5 +322,54 @@ func dyes() []Check {
 	g.source = "Patsavas, Byrne & Liu 2013, printed check values (second-hand)"
 	g.is("cresol red e3/e2, S 35, 25 C", 0.032303, 6e-7, func() float64 { _, v := acidbase.CresolRedRatios(35, 25); return v })
 	g.is("cresol red e1, S 35, 25 C", 0.001278, 6e-7, func() float64 { v, _ := acidbase.CresolRedRatios(35, 25); return v })
+	return g.list
+}
+
+// dyeFigures: the wavelengths of the ratios, and conditions at which the small
+// coefficients show.
+func dyeFigures() []Check {
+	g := group{name: "indicator equations"}
+	named := func(key string, get func(acidbase.DyeEquation) float64) func() (float64, error) {
+		return func() (float64, error) {
+			e, ok := acidbase.DyeEquationNamed(key)
+			if !ok {
+				return 0, fmt.Errorf("no equation %s", key)
+			}
+			return get(e), nil
+		}
+	}
+	for _, r := range []struct {
+		key        string
+		base, acid float64
+	}{{"mcp-1993", 578, 434}, {"mcp-2011", 578, 434}, {"mcp-2018", 578, 434}, {"tb-1996", 596, 435}, {"bcg-1993", 616, 444}, {"bcp-1998", 589, 432},
+		{"bpb-2018", 590, 436}, {"cr-1989", 573, 433}, {"bcp-2001", 589, 432}, {"pr-2001", 558, 433}} {
+		g.source = "as the equation is published"
+		g.try("wavelength of the base form, "+r.key+", nm", r.base, 1e-9, named(r.key, func(e acidbase.DyeEquation) float64 { return e.BaseNM }))
+		g.try("wavelength of the acid form, "+r.key+", nm", r.acid, 1e-9, named(r.key, func(e acidbase.DyeEquation) float64 { return e.AcidNM }))
+	}
+	for _, r := range []struct {
+		key    string
+		ratio  float64
+		s, t   float64
+		ph     float64
+		source string
+	}{
+		{"bcg-1993", 0.02, 35, 25, 2.1930349807, "Breland & Byrne 1993, computed"},
+		{"pr-2001", 0.02, 0, 25, 5.8421904191, "Yao & Byrne 2001, computed"},
+		{"cr-1989", 0.02, 20, 25, 5.6637657116, "Byrne & Breland 1989 (from memory), computed"},
+		{"bcp-2021", 0.02, 35, 25, 3.6847725374, "Hudson-Heck, Liu & Byrne 2021, computed"},
+		{"bcp-2021", 20, 35, 25, 6.8661588832, "Hudson-Heck, Liu & Byrne 2021, computed"},
+		{"mcp-2011", 5, 20, 25, 8.5289196542, "Liu, Patsavas & Byrne 2011, computed"},
+	} {
+		g.source = r.source
+		g.try(fmt.Sprintf("pH by %s, S %g, %g C, R %g", r.key, r.s, r.t, r.ratio), r.ph, 1e-8, named(r.key, func(e acidbase.DyeEquation) float64 {
+			return e.PH(r.ratio, acidbase.DyeCondition{Salinity: r.s, TempC: r.t})
+		}))
+		g.try(fmt.Sprintf("ratio by %s, S %g, %g C, at that pH for R %g", r.key, r.s, r.t, r.ratio), r.ratio, r.ratio*1e-7, named(r.key, func(e acidbase.DyeEquation) float64 {
+			return e.Ratio(r.ph, acidbase.DyeCondition{Salinity: r.s, TempC: r.t})
+		}))
+	}
+	g.source = "Patsavas, Byrne & Liu 2013 (second-hand), computed"
+	g.is("cresol red e3/e2, S 20, 25 C", 0.0318285705, 1e-9, func() float64 { _, v := acidbase.CresolRedRatios(20, 25); return v })
 	return g.list
 }
