@@ -25,10 +25,14 @@ func (p *place) initialise(ctx context.Context, cfg Config) error {
 	} else if err != nil && !errors.Is(err, os.ErrNotExist) {
 		return fmt.Errorf("looking into %s: %w", p.pg, err)
 	}
-	fresh := p.pg + ".new"
-	if err := os.RemoveAll(fresh); err != nil { // ours: left by an initialisation that was killed
-		return fmt.Errorf("removing the rest of an interrupted initialisation: %w", err)
+	// A killed program leaves its initdb running for a moment, so each try has
+	// a folder of its own; what an earlier one left is cleared as far as it lets us.
+	if left, err := filepath.Glob(p.pg + ".new*"); err == nil {
+		for _, d := range left {
+			_ = os.RemoveAll(d) // still being written: the next start clears it
+		}
 	}
+	fresh := fmt.Sprintf("%s.new%d", p.pg, os.Getpid())
 	if err := p.ownDir(fresh); err != nil {
 		return err
 	}
