@@ -260,7 +260,6 @@ type samples struct {
 	roles   map[string]int // role by content, of files that the name calls scans
 	layouts []parse.Layout
 	refused string
-	blanks  bool
 	waves   [2]float64
 }
 

@@ -185,7 +185,7 @@ func (p *proposal) writeCompounds(b *strings.Builder) {
 	if len(p.compounds) == 0 {
 		return
 	}
-	p.doubt(b, "Which compounds these are, no file says. Without a [[compound]] a set waits. Fill in the charge of the acid form and the expected pKa, and remove the # signs.")
+	p.doubt(b, "Which compounds these are, no file says. Without a [[compound]] a set is computed with one step, without an expected pKa and without a correction for activity. Fill in the charge of the acid form and the expected pKa, and remove the # signs.")
 	for i, c := range p.compounds {
 		if i == 20 {
 			fmt.Fprintf(b, "# and %d more codes\n", len(p.compounds)-i)

@@ -237,8 +237,12 @@ func sayDryFiles(out io.Writer, l *pipeline.DryLook) {
 			if text == "" {
 				text = p.Why
 			}
-			fold(out, "  "+p.Folder+"/"+p.Path+"  ", "      ", "")
+			fmt.Fprintln(out, "  "+p.Folder+"/"+p.Path)
+			text, command, adopt := strings.Cut(text, " Adopt it with: ")
 			fold(out, "      ", "      ", text)
+			if adopt {
+				fmt.Fprintln(out, "      "+command) // whole, to be copied
+			}
 		}
 	}
 	if len(l.Refused) > 0 {
