@@ -144,6 +144,9 @@ func (s *Service) inputOf(ctx context.Context, x *db.Set, r *db.Result, u used) 
 			}
 		}
 	}
+	if err := s.readByClock(ctx, cfg, in, &u, data); err != nil {
+		return nil, nil, err
+	}
 	in.Electrode = u.Electrode
 	if u.CalibrationID != 0 {
 		cal, err := s.store.CalibrationByID(ctx, nil, u.CalibrationID)

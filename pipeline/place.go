@@ -63,6 +63,16 @@ func (s *Service) place(ctx context.Context, tx pgx.Tx, items []*item, now time.
 			joinOpen(&p, open)
 			bySet[p.set.Key] = append(bySet[p.set.Key], p)
 		}
+		if loggedPH(it.match) {
+			if open == nil {
+				if open, err = s.store.OpenSets(ctx, tx); err != nil {
+					return nil, err
+				}
+			}
+			for _, id := range waitingForClock(it, open) {
+				touched[id] = true
+			}
+		}
 		if err := s.calibrated(ctx, tx, it, now); err != nil {
 			return nil, err
 		}
@@ -143,6 +153,9 @@ func (s *Service) placesOf(it *item) ([]place, error) {
 		p := s.placeOf(it, it.match, time.Time{})
 		return []place{p}, nil
 	case naming.RolePH:
+		if loggedPH(it.match) {
+			return nil, nil // its rows find their scans by clock
+		}
 		if it.sheet != nil {
 			return s.placesBySheet(it), nil
 		}
@@ -166,7 +179,7 @@ func (s *Service) placesOf(it *item) ([]place, error) {
 			continue // said in check() before the file was taken
 		}
 		sc := &it.content.Scans[i]
-		p := s.placeOf(it, m, sc.Measured)
+		p := s.placeOf(it, clockRung(m, rule, sc.Measured), sc.Measured)
 		id := it.taken.Stored.Scans[i]
 		p.member.ScanID = &id
 		p.scanAt = sc.Measured
@@ -387,6 +400,9 @@ func (s *Service) progress(ctx context.Context, tx pgx.Tx, o db.OpenSet, now tim
 		p.Members = append(p.Members, ms)
 	}
 	if err := s.planned(ctx, tx, o, members, &p); err != nil {
+		return err
+	}
+	if err := s.pairedByClock(ctx, tx, o, members, &p); err != nil {
 		return err
 	}
 	// A set that was whole before and changes is whole at once: somebody waits for the correction.

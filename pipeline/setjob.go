@@ -76,6 +76,7 @@ func (s *Service) computeSet(ctx context.Context, a job.Set, done func(context.C
 type used struct {
 	Closed        string             `json:"instrument_closed,omitempty"` // why the instrument was closed
 	AnchorID      int64              `json:"anchor_result_id,omitempty"`
+	Logs          []int64            `json:"log_file_ids,omitempty"` // whose readings were paired by clock
 	SettingsID    int64              `json:"settings_id"`
 	CalibrationID int64              `json:"calibration_id,omitempty"`
 	ArchiveID     int64              `json:"archive_result_id,omitempty"`
@@ -113,6 +114,9 @@ func (s *Service) input(ctx context.Context, data *db.SetData) (*assay.Input, *u
 	}
 	if first.IsZero() {
 		first = data.Set.FirstSeen
+	}
+	if err := s.readByClock(ctx, set, in, u, data); err != nil {
+		return nil, nil, err
 	}
 	if err := s.closedFor(ctx, u, data); err != nil {
 		return nil, nil, err
@@ -374,6 +378,7 @@ type record struct {
 
 // result states an outcome as rows.
 func (s *Service) result(ctx context.Context, data *db.SetData, in *assay.Input, u *used, out *assay.Outcome, at time.Time) (*db.Result, error) {
+	holdTwice(out)
 	closeReport(out, data.Set.Instrument, u.Closed)
 	rec, err := recordOf(in, u, out)
 	if err != nil {
@@ -560,6 +565,15 @@ func (s *Service) inputHash(ctx context.Context, data *db.SetData, u *used, ex [
 		return [32]byte{}, err
 	}
 	fmt.Fprintf(&b, "settings %s electrode %s exchange %v buffers %v\n", settings.Hash(text), u.Electrode, ex, u.Corrections)
+	if len(u.Logs) > 0 {
+		rows, err := s.store.ReadingsOf(ctx, nil, u.Logs)
+		if err != nil {
+			return [32]byte{}, err
+		}
+		for _, r := range rows {
+			fmt.Fprintf(&b, "logged %s %v\n", r.Measured.UTC().Format(time.RFC3339Nano), r.PH)
+		}
+	}
 	if u.AnchorID != 0 {
 		sum, err := s.store.InputOf(ctx, u.AnchorID)
 		if err != nil {
