@@ -82,6 +82,7 @@ type DrySet struct {
 	Older    int          `json:"older"`   // members that a later correction replaces
 	members  []place
 	labels   map[string]bool // rows of its pH tables
+	twice    []string        // rungs that several logged readings claim
 }
 
 // A DryRung is one solution of a set.

@@ -159,3 +159,46 @@ func TestLookDryCompares(t *testing.T) {
 		t.Errorf("a look differs from itself: %v", again)
 	}
 }
+
+// TestLookDryByClock: one reading near a scan is its pH, two are a question,
+// and scans of a run without its sheet are parked with the reason.
+func TestLookDryByClock(t *testing.T) {
+	dir := t.TempDir()
+	l := &leaver{}
+	l.byClock(0, "TB2219")
+	l.files = append(l.files, leftFile{path: "S118_A05.csv", text: l.scan(7)})
+	deposit(t, dir, l.files)
+	text := fmt.Sprintf("[laboratory]\nzone = \"Europe/Vienna\"\n[[folder]]\nname = \"U1\"\npath = %q\ninstrument = \"U1\"\n"+
+		"[[rule]]\nname = \"scans\"\npair = \"clock\"\npattern = '^(?P<stamp>\\d{8}-\\d{6})-(?P<set>[A-Z]{2}\\d{4})\\.txt$'\n"+
+		"[[rule]]\nname = \"log\"\npattern = '^(?P<role>phlog)_(?P<date>\\d{8})\\.csv$'\n"+
+		"[[rule]]\nname = \"tray\"\npattern = '^(?P<run>S\\d+)_(?P<pos>[A-H]\\d{2})\\.csv$'\n[[instrument]]\nname = \"U1\"\n", dir)
+	set, err := settings.Read([]byte(text), "clock.toml")
+	if err != nil {
+		t.Fatal(err)
+	}
+	look := func() *DryLook {
+		l, err := LookDry(t.Context(), set, time.Now(), time.Time{})
+		if err != nil {
+			t.Fatal(err)
+		}
+		return l
+	}
+	d := look()
+	if len(d.Sets) != 1 || d.Sets[0].Pairing != "by clock" || len(d.Sets[0].Rungs) != 8 {
+		t.Fatalf("sets: %+v", d.Sets)
+	}
+	if len(d.Parked) != 1 || !strings.Contains(d.Parked[0].Why, "sheet of run S118") {
+		t.Errorf("parked: %+v", d.Parked)
+	}
+	log := filepath.Join(dir, "phlog_20260311.csv")
+	was, err := os.ReadFile(log)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if err := os.WriteFile(log, []byte(strings.Replace(string(was), "\n2026-03-11 20:45", "\n2026-03-11 20:31:50,7.99,25.0\n2026-03-11 20:45", 1)), 0o644); err != nil {
+		t.Fatal(err)
+	}
+	if s := look().Sets[0]; s.State != naming.Waiting || !strings.Contains(strings.Join(s.Missing, "; "), "instead of several") {
+		t.Errorf("two readings for one scan: %s for %v", s.State, s.Missing)
+	}
+}

@@ -2,6 +2,7 @@ package pipeline
 
 import (
 	"cmp"
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -11,13 +12,6 @@ import (
 	"pkvigil/db"
 	"pkvigil/parse"
 	"pkvigil/pipeline/naming"
-)
-
-// Bounds of pairing by clock: a reading from two minutes before to ten after
-// belongs to a scan (specified).
-const (
-	dryClockBefore = 2 * time.Minute
-	dryClockAfter  = 10 * time.Minute
 )
 
 // dryRunKey names the run of a match within its folder.
@@ -33,24 +27,34 @@ func (d *dryRun) resolve() {
 		}
 	}
 	for _, f := range d.taken() {
-		for i := range f.traces {
-			t := &f.traces[i]
-			if t.match.Set != "" {
+		var placed []dryTrace
+		waits := ""
+		for _, t := range f.traces {
+			if t.match.Set != "" || t.match.Run == "" {
+				placed = append(placed, t)
 				continue
 			}
 			rows := sheets[dryRunKey(f, t.match)]
-			j := slices.IndexFunc(rows, func(r parse.Row) bool { return naming.RungKey(r.Position) == naming.RungKey(t.match.Pos) })
-			if j < 0 || t.match.Pos == "" {
-				continue
+			i := slices.IndexFunc(rows, func(r parse.Row) bool { return naming.RungKey(r.Position) == naming.RungKey(t.match.Pos) })
+			switch {
+			case len(rows) == 0:
+				waits = (&sheetError{run: t.match.Run}).Error()
+			case i >= 0:
+				placed = append(placed, d.fromSheet(f, t, rows[i], rows)...)
+			case len(f.traces) == 1:
+				waits = (&sheetError{run: t.match.Run, pos: t.match.Pos}).Error()
 			}
-			d.fromSheet(f, t, rows[j])
+		}
+		f.traces = placed
+		if len(placed) == 0 && waits != "" {
+			f.fate.State, f.matchErr = db.FileParked, errors.New(waits)
 		}
 	}
 }
 
-// fromSheet places a trace where a row of a sheet says.
-func (d *dryRun) fromSheet(f *dryFile, t *dryTrace, row parse.Row) {
-	t.match.Set = row.Set
+// fromSheet places a trace where a row of a sheet says; a blank without a set
+// serves all sets of the sheet.
+func (d *dryRun) fromSheet(f *dryFile, t dryTrace, row parse.Row, rows []parse.Row) []dryTrace {
 	if row.Rung != "" {
 		t.match.Rung = row.Rung
 	}
@@ -60,8 +64,23 @@ func (d *dryRun) fromSheet(f *dryFile, t *dryTrace, row parse.Row) {
 	if math.IsNaN(t.ph) && !math.IsNaN(row.PH) {
 		t.ph, t.from = row.PH, "sheet"
 	}
-	it := &item{file: f.File, folder: d.set.FolderByName(f.Root), match: f.match, taken: &db.Taken{}}
-	t.place = d.s.placeOf(it, t.match, t.measured)
+	sets := []string{row.Set}
+	if row.Set == "" {
+		sets = nil
+		for _, r := range rows {
+			if t.match.Role == naming.RoleBlank && r.Set != "" && !slices.Contains(sets, r.Set) {
+				sets = append(sets, r.Set)
+			}
+		}
+	}
+	var out []dryTrace
+	for _, set := range sets {
+		t.match.Set = set
+		it := &item{file: f.File, folder: d.set.FolderByName(f.Root), match: f.match, taken: &db.Taken{}}
+		t.place = d.s.placeOf(it, t.match, t.measured)
+		out = append(out, t)
+	}
+	return out
 }
 
 // gather sorts traces and tables into sets.
@@ -202,7 +221,7 @@ func (s *DrySet) shown(f *dryFile, t *dryTrace) string {
 // judge pairs pH values and says what each set is doing.
 func (d *dryRun) judge(now time.Time) {
 	tables := map[string][]dryReading{} // runs with a pH table of their own
-	logs := map[string][]dryReading{}   // logs of a folder
+	logs := map[string][]dryReading{}   // logs of a folder, by the right time
 	for _, f := range d.taken() {
 		switch {
 		case f.match.Role != naming.RolePH:
@@ -215,7 +234,10 @@ func (d *dryRun) judge(now time.Time) {
 		case f.match.Run != "":
 			tables[dryRunKey(f, f.match)] = append(tables[dryRunKey(f, f.match)], f.readings...)
 		default:
-			logs[f.Root] = append(logs[f.Root], f.readings...)
+			for _, r := range f.readings {
+				r.at = r.at.Add(-d.ahead(f.Root))
+				logs[f.Root] = append(logs[f.Root], r)
+			}
 		}
 	}
 	ended := map[string]bool{}
@@ -226,7 +248,13 @@ func (d *dryRun) judge(now time.Time) {
 		if s.Run != "" {
 			s.fill(tables[s.Folder+"\x00"+s.Run], "table")
 		}
-		d.byClock(s, logs[s.Folder])
+		var log []dryReading
+		for root, rows := range logs {
+			if folder := d.set.FolderByName(root); folder == nil || folder.Instrument == "" || folder.Instrument == d.instrument(s) {
+				log = append(log, rows...)
+			}
+		}
+		d.byClock(s, log)
 		d.judgeSet(s, now)
 	}
 }
@@ -243,22 +271,41 @@ func (s *DrySet) fill(rows []dryReading, from string) {
 	}
 }
 
-// byClock gives rungs the reading taken when they were measured.
-func (d *dryRun) byClock(s *DrySet, log []dryReading) {
-	if len(log) == 0 {
-		return
+func (d *dryRun) ahead(folder string) time.Duration {
+	if f := d.set.FolderByName(folder); f != nil {
+		return f.ClockAhead
 	}
+	return 0
+}
+
+// instrument is the first part of a set's key.
+func (d *dryRun) instrument(s *DrySet) string {
+	name, _, _ := strings.Cut(s.Key, "/")
+	return name
+}
+
+// byClock gives rungs the one reading taken when they were measured; two that
+// claim one scan are said and neither is taken.
+func (d *dryRun) byClock(s *DrySet, log []dryReading) {
 	for i := range s.Rungs {
 		r := &s.Rungs[i]
 		at := d.measured(s, r.Path)
 		if at.IsZero() || !math.IsNaN(r.PH) {
 			continue
 		}
+		at = at.Add(-d.ahead(s.Folder))
+		var hits []dryReading
 		for _, x := range log {
-			if gap := x.at.Sub(at); !x.at.IsZero() && gap >= -dryClockBefore && gap <= dryClockAfter {
-				r.PH, r.From = x.ph, "clock"
-				break
+			if !x.at.IsZero() && inWindow(x.at, at) {
+				hits = append(hits, x)
 			}
+		}
+		switch len(hits) {
+		case 0:
+		case 1:
+			r.PH, r.From = hits[0].ph, "clock"
+		default:
+			s.twice = append(s.twice, r.Rung)
 		}
 	}
 }
@@ -309,6 +356,10 @@ func (d *dryRun) judgeSet(s *DrySet, now time.Time) {
 		p.Members = append(p.Members, m)
 	}
 	s.State, s.Missing = naming.Completeness(exp, p, now)
+	if len(s.twice) > 0 {
+		s.State = naming.Waiting
+		s.Missing = append(s.Missing, "one pH reading instead of several around "+strings.Join(s.twice, ", "))
+	}
 	s.Pairing = dryPairing(paired, len(s.Rungs))
 	slices.SortFunc(s.Rungs, func(a, b DryRung) int {
 		if math.IsNaN(a.PH) || math.IsNaN(b.PH) || a.PH == b.PH {

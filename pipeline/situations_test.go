@@ -257,12 +257,13 @@ func (l *leaver) runs(n, k int, set string) {
 	}
 }
 
-// byClock leaves scans with a time in their names and one log of the meter a day.
+// byClock leaves scans with a time in their names and one log of the meter a
+// day. A quarter of an hour lies between scans: closer ones share their readings.
 func (l *leaver) byClock(k int, set string) {
 	log := "time,pH,temperature (C)\n"
 	for r := 1; r <= 8; r++ {
-		l.add(fmt.Sprintf("202603%02d-20%02d33-%s.txt", 11+k, 5*r, set), set, "scan", l.scan(6+0.37*float64(r)))
-		log += fmt.Sprintf("2026-03-%02d 20:%02d:50,%.2f,25.0\n", 11+k, 5*r, 6+0.37*float64(r))
+		l.add(fmt.Sprintf("202603%02d-%02d%02d33-%s.txt", 11+k, 20+r/4, 15*(r%4), set), set, "scan", l.scan(6+0.37*float64(r)))
+		log += fmt.Sprintf("2026-03-%02d %02d:%02d:50,%.2f,25.0\n", 11+k, 20+r/4, 15*(r%4), 6+0.37*float64(r))
 	}
 	l.add(fmt.Sprintf("phlog_202603%02d.csv", 11+k), "", "ph", log)
 }
