@@ -230,6 +230,11 @@ func traceMatch(rules *naming.Rules, rule naming.Rule, it *item, i int) (naming.
 func (s *Service) placeOf(it *item, m naming.Match, measured time.Time) place {
 	set, _, _ := s.current()
 	night, sure := s.nightOf(it, m, measured)
+	if measured.IsZero() && m.Stamp != "" { // the name says when, where the file does not
+		if t, err := time.ParseInLocation("2006-01-02T15:04:05", m.Stamp, s.zone(it.file.Root)); err == nil {
+			measured = t
+		}
+	}
 	inst := m.Inst
 	if inst == "" && it.folder != nil {
 		inst = it.folder.Instrument
