@@ -6,6 +6,8 @@ import (
 	"sync"
 
 	"github.com/rs/zerolog"
+
+	"pkvigil/db"
 )
 
 // onChange logs a trouble when it begins or changes and once more when it
@@ -40,7 +42,11 @@ func (o *onChange) note(log zerolog.Logger, what string, err error) {
 		o.last = map[string]string{}
 	}
 	text := ""
-	if err != nil {
+	switch {
+	case db.Away(err):
+		// A server that goes away fails in several wordings, one after the other.
+		text = "the database is away"
+	case err != nil:
 		text = err.Error()
 	}
 	was := o.last[what]
