@@ -273,7 +273,7 @@ func observations(key string, use []*track, k int, first drift.Night) []drift.Ob
 	byNight := map[string][]float64{}
 	for i, t := range use {
 		for j, n := range t.nights {
-			if drift.Night(nightNumber(n)) < first || math.IsNaN(t.values[j]) {
+			if drift.Night(nightNumber(n)) < first || math.IsNaN(t.values[j]) || n < t.since() {
 				continue
 			}
 			if byNight[n] == nil {
@@ -601,6 +601,7 @@ func (s *Service) judgeSystem(ctx context.Context, tx pgx.Tx, sc *scene, signals
 	if err != nil {
 		return fmt.Errorf("evaluating night %s: %w", sc.night, err)
 	}
+	ev.Explanations = oneUnknown(ev.Explanations)
 	rows, err := s.store.OpenCases(ctx, tx)
 	if err != nil {
 		return err
@@ -626,6 +627,20 @@ func (s *Service) judgeSystem(ctx context.Context, tx pgx.Tx, sc *scene, signals
 		}
 	}
 	return s.store.PutWatermark(ctx, tx, "signals", signals, now)
+}
+
+// oneUnknown keeps the first of several disturbances that no known cause
+// explains: what the second pass finds in its rest is of the same making.
+func oneUnknown(all []drift.Explanation) []drift.Explanation {
+	seen := false
+	return slices.DeleteFunc(slices.Clone(all), func(e drift.Explanation) bool {
+		if e.Finding != drift.NoneKnown {
+			return false
+		}
+		again := seen
+		seen = true
+		return again
+	})
 }
 
 // keepCase stores a case as it now is, its ranking and reach, and tells.

@@ -294,6 +294,16 @@ func (t *track) learn(c settings.Charts, tonight string) {
 	t.sd = math.Sqrt((6*prior*prior + math.Max(n-1, 0)*sd*sd) / (6 + math.Max(n-1, 0)))
 }
 
+// since is the first night that the baseline in force may judge: a signed one
+// was learnt anew because something had changed, and earlier nights belong to
+// the baseline before it.
+func (t *track) since() string {
+	if b := t.stored; b != nil && b.SignedBy != "" {
+		return b.FromNight
+	}
+	return ""
+}
+
 // budget is the spread promised for one night: what the habits of careful work
 // give, and what the fit says of its own noise for this very reference.
 func (t *track) budget() float64 {

@@ -7,6 +7,7 @@ import (
 	"os"
 	"os/signal"
 	"path/filepath"
+	"runtime/debug"
 	"syscall"
 	"time"
 
@@ -182,6 +183,7 @@ func (a *app) runDemo(ctx context.Context, dir string, nights int, seed uint64, 
 	if err != nil {
 		return err
 	}
+	debug.SetGCPercent(400) // sixty nights in two minutes leave little time for collecting
 	start := time.Now()
 	fmt.Fprintf(a.err, "%s: %d nights from %s, into %s\n", set.Laboratory.Name, nights, story.Date(1), dir)
 	err = pipeline.Replay{Story: story, Base: dir, From: 1, To: nights, Progress: a.progress()}.Run(ctx, s, clock)
