@@ -216,6 +216,9 @@ func (s *Service) step(ctx context.Context, clock *SetClock, at time.Time) error
 			}
 			return err
 		}
+		if n, err := s.store.JobsOpen(ctx, "sets"); err == nil && n == 0 {
+			return nil // nothing was completed by this tick
+		}
 	}
 	return s.Drain(ctx)
 }

@@ -179,7 +179,7 @@ func (a *app) runDemo(ctx context.Context, dir string, nights int, seed uint64, 
 		return err
 	}
 	clock := pipeline.NewSetClock(story.Start())
-	s, err := pipeline.Open(ctx, pipeline.Config{Settings: set, Text: text, Clock: clock, Log: a.logger(zerolog.ErrorLevel), Sweep: true, Work: true, AskAgain: 3 * time.Hour})
+	s, err := pipeline.Open(ctx, pipeline.Config{Settings: set, Text: text, Clock: clock, Log: a.logger(zerolog.ErrorLevel), Sweep: true, Work: true, AskAgain: 6 * time.Hour})
 	if err != nil {
 		return err
 	}
