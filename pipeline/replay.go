@@ -17,7 +17,7 @@ import (
 // replayStep is how much of the night passes between two sweeps of a replay.
 // A file settles when two sweeps agree, so it is taken in one step after it
 // was written.
-const replayStep = time.Hour
+const replayStep = 45 * time.Minute
 
 // A Replay plays the nights of an invented laboratory into real folders and
 // lets the service work on them as on any other night. It differs from watch
