@@ -90,6 +90,10 @@ func Compute(in Input) *Outcome {
 		out.Facts.Fit = res
 		return out.fail(&in, err)
 	}
+	if len(res.Full.PKa) == 0 || len(res.Own.PKa) == 0 {
+		return out.fail(&in, fmt.Errorf("no constant can be found between pH %.2f and %.2f: the colour does not change as one over this ladder; extend it across the pKa",
+			slices.Min(prep.PH), slices.Max(prep.PH)))
+	}
 	res, prob = out.leaveOut(&in, pr, el, prob, res)
 	out.Fit, out.Facts.Fit = res, res
 	out.Facts.Keys, out.Facts.PH, out.Facts.Prepared = out.Prepared.Keys, out.Prepared.PH, out.Prepared
@@ -210,7 +214,7 @@ func (o *Outcome) leaveOut(in *Input, pr pairing, el *acidbase.Electrode, prob f
 		o.Prepared = without(o.Prepared, worst)
 		prob = in.problem(o.Prepared, pr, el)
 		next, err := fit.Solve(prob, fit.Options{Effective: o.Prepared.Effective})
-		if err != nil {
+		if err != nil || len(next.Full.PKa) == 0 {
 			break
 		}
 		res, o.WithAll = next, all
