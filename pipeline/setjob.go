@@ -542,6 +542,9 @@ func inputs(data *db.SetData, out *assay.Outcome) []db.Input {
 	var rows []db.Input
 	for _, m := range data.Members {
 		row := db.Input{FileID: m.FileID, ScanID: m.ScanID, Role: m.Role, Rung: m.Rung, Used: out.Fit != nil}
+		if out.Fit == nil {
+			row.LeftOutWhy = "the set has no number" // its checks say why
+		}
 		if why, ok := left[naming.RungKey(m.Rung)]; ok && m.Role == naming.RoleScan {
 			row.Used, row.LeftOutWhy = false, why
 		}
